@@ -1,0 +1,1 @@
+//! Rules over columns, and the episodes they write down. Nothing here yet: rules come with their own work.

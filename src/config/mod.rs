@@ -1,0 +1,1 @@
+//! The config file: strict, with errors that name file, line and the nearest key that exists.

@@ -1,0 +1,1 @@
+//! Sums that are exact: the true sum of the contributions, rounded once.

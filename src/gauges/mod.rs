@@ -1,0 +1,1 @@
+//! The diagnostics, one file each.

@@ -1,0 +1,1 @@
+//! Typed, strided, read-only views of host arrays.

@@ -1,0 +1,1 @@
+//! Reading a series, also while a host writes it.

@@ -1,0 +1,4 @@
+//! The series on disk.
+
+pub mod record;
+pub mod schema;

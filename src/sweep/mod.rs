@@ -1,0 +1,1 @@
+//! One pass over the lent arrays, block by block.

@@ -1,0 +1,1 @@
+//! One process alone: every reduction is its own result.

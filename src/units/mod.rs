@@ -1,0 +1,1 @@
+//! Units, physical constants and the expansion of the universe.
