@@ -14,10 +14,12 @@ pub fn spawn<T: Send + 'static>(
     body: impl FnOnce() -> T + Send + 'static,
 ) -> io::Result<JoinHandle<T>> {
     let blocked = SignalsBlocked::now();
-    let handle = std::thread::Builder::new().name(name.to_string()).spawn(move || {
-        let _control = FloatGuard::enter();
-        body()
-    });
+    let handle = std::thread::Builder::new()
+        .name(name.to_string())
+        .spawn(move || {
+            let _control = FloatGuard::enter();
+            body()
+        });
     drop(blocked);
     handle
 }
@@ -47,7 +49,11 @@ impl Drop for SignalsBlocked {
     fn drop(&mut self) {
         // SAFETY: `before` was filled by the call in `now`.
         unsafe {
-            libc::pthread_sigmask(libc::SIG_SETMASK, &raw const self.before, std::ptr::null_mut());
+            libc::pthread_sigmask(
+                libc::SIG_SETMASK,
+                &raw const self.before,
+                std::ptr::null_mut(),
+            );
         }
     }
 }
