@@ -48,6 +48,10 @@ impl Draws {
         low + (high - low) * (self.next() >> 11) as f64 / (1_u64 << 53) as f64
     }
 
+    fn one_in(&mut self, chances: u64) -> bool {
+        self.next().is_multiple_of(chances)
+    }
+
     fn pick<T: Copy>(&mut self, from: &[T]) -> T {
         from[(self.next() % from.len() as u64) as usize]
     }
@@ -73,27 +77,37 @@ fn constants() -> Vec<Value> {
 }
 
 const NAMES: [&str; 26] = [
-    "cm", "m", "km", "pc", "kpc", "Mpc", "Gpc", "AU", "lyr", "g", "kg", "Msun", "solMass", "s", "d", "yr", "kyr",
-    "Myr", "Gyr", "K", "erg", "J", "eV", "keV", "W", "Lsun",
+    "cm", "m", "km", "pc", "kpc", "Mpc", "Gpc", "AU", "lyr", "g", "kg", "Msun", "solMass", "s",
+    "d", "yr", "kyr", "Myr", "Gyr", "K", "erg", "J", "eV", "keV", "W", "Lsun",
 ];
 
 /// A product of powers of names, in a spelling that both this library and astropy read.
 fn unit(draws: &mut Draws) -> Value {
     let mut words = Vec::new();
-    if draws.next() % 2 == 0 {
-        words.push(draws.pick(&["1e10", "10", "2.5", "1.989e-3", "6.4E+5"]).to_string());
+    if draws.one_in(2) {
+        words.push(
+            draws
+                .pick(&["1e10", "10", "2.5", "1.989e-3", "6.4E+5"])
+                .to_string(),
+        );
     }
     for _ in 0..1 + draws.next() % 4 {
         let name = draws.pick(&NAMES);
-        words.push(match draws.pick(&["", "^2", "^-1", "**-3", "^(1/2)", "^(-1/3)", "2", "-1", "**(5/2)"]) {
-            "" => name.to_string(),
-            power => format!("{name}{power}"),
-        });
+        words.push(
+            match draws.pick(&[
+                "", "^2", "^-1", "**-3", "^(1/2)", "^(-1/3)", "2", "-1", "**(5/2)",
+            ]) {
+                "" => name.to_string(),
+                power => format!("{name}{power}"),
+            },
+        );
     }
     let text = words.join(draws.pick(&[" ", "*", " * "]));
     match Unit::parse(&text, &Symbols::default()) {
-        Ok(unit) => json!({ "kind": "unit", "text": text, "cgs": unit.factor_cgs, "h_power": unit.h_power,
-            "a_power": unit.a_power, "base": unit.dimension.in_base_units() }),
+        Ok(unit) => {
+            json!({ "kind": "unit", "text": text, "cgs": unit.factor_cgs, "h_power": unit.h_power,
+            "a_power": unit.a_power, "base": unit.dimension.in_base_units() })
+        }
         Err(error) => json!({ "kind": "unit", "text": text, "error": error.to_string() }),
     }
 }
@@ -107,14 +121,24 @@ struct Stated {
 }
 
 impl Stated {
-    fn draw(draws: &mut Draws, names: &[&'static str], h_powers: &[i64], a_powers: &[i64]) -> Stated {
+    fn draw(
+        draws: &mut Draws,
+        names: &[&'static str],
+        h_powers: &[i64],
+        a_powers: &[i64],
+    ) -> Stated {
         let number = match draws.next() % 3 {
             0 => 1.0,
             1 => 1e10,
             _ => draws.between(0.1, 20.0),
         };
         let (h_power, a_power) = (draws.pick(h_powers), draws.pick(a_powers));
-        Stated { number, name: draws.pick(names), h_power, a_power }
+        Stated {
+            number,
+            name: draws.pick(names),
+            h_power,
+            a_power,
+        }
     }
 
     fn toml(&self) -> String {
@@ -145,12 +169,28 @@ fn system(draws: &mut Draws) -> Value {
         stated.insert(key.to_string(), unit.json());
     };
     let lengths = ["kpc", "Mpc", "pc", "cm", "km", "lyr"];
-    state("length", Stated::draw(draws, &lengths, &[0, -1], &[0, 0, 1]), &mut toml);
-    state("mass", Stated::draw(draws, &["Msun", "g", "kg"], &[0, -1], &[0]), &mut toml);
-    state("velocity", Stated::draw(draws, &["km/s", "cm/s", "kpc/Gyr", "pc/Myr"], &[0], &[0]), &mut toml);
+    state(
+        "length",
+        Stated::draw(draws, &lengths, &[0, -1], &[0, 0, 1]),
+        &mut toml,
+    );
+    state(
+        "mass",
+        Stated::draw(draws, &["Msun", "g", "kg"], &[0, -1], &[0]),
+        &mut toml,
+    );
+    state(
+        "velocity",
+        Stated::draw(draws, &["km/s", "cm/s", "kpc/Gyr", "pc/Myr"], &[0], &[0]),
+        &mut toml,
+    );
     let mut rest = serde_json::Map::new();
-    let mut optional = |draws: &mut Draws, key: &str, names: &[&'static str], a_powers: &[i64], toml: &mut String| {
-        let is_wanted = draws.next() % 2 == 0;
+    let mut optional = |draws: &mut Draws,
+                        key: &str,
+                        names: &[&'static str],
+                        a_powers: &[i64],
+                        toml: &mut String| {
+        let is_wanted = draws.one_in(2);
         if is_wanted {
             let unit = Stated::draw(draws, names, &[0, -1, 2], a_powers);
             toml.push_str(&format!("{key} = {}\n", unit.toml()));
@@ -158,26 +198,76 @@ fn system(draws: &mut Draws) -> Value {
         }
         is_wanted
     };
-    optional(draws, "time", &["Gyr", "s", "Myr", "kpc s/km"], &[0], &mut toml);
-    optional(draws, "star_formation_rate", &["Msun/yr", "g/s", "kg/Gyr"], &[0, -1], &mut toml);
-    optional(draws, "accretion_rate", &["Msun/yr", "g/s"], &[0], &mut toml);
-    optional(draws, "internal_energy", &["km^2/s^2", "erg/g", "J/kg", "(km/s)**2"], &[0], &mut toml);
-    optional(draws, "energy", &["erg", "keV", "Msun (km/s)^2"], &[0, 2], &mut toml);
-    optional(draws, "momentum", &["Msun km/s", "g cm s^-1"], &[0, 1], &mut toml);
+    optional(
+        draws,
+        "time",
+        &["Gyr", "s", "Myr", "kpc s/km"],
+        &[0],
+        &mut toml,
+    );
+    optional(
+        draws,
+        "star_formation_rate",
+        &["Msun/yr", "g/s", "kg/Gyr"],
+        &[0, -1],
+        &mut toml,
+    );
+    optional(
+        draws,
+        "accretion_rate",
+        &["Msun/yr", "g/s"],
+        &[0],
+        &mut toml,
+    );
+    optional(
+        draws,
+        "internal_energy",
+        &["km^2/s^2", "erg/g", "J/kg", "(km/s)**2"],
+        &[0],
+        &mut toml,
+    );
+    optional(
+        draws,
+        "energy",
+        &["erg", "keV", "Msun (km/s)^2"],
+        &[0, 2],
+        &mut toml,
+    );
+    optional(
+        draws,
+        "momentum",
+        &["Msun km/s", "g cm s^-1"],
+        &[0, 1],
+        &mut toml,
+    );
     optional(draws, "temperature", &["K"], &[0], &mut toml);
     let mut forms = serde_json::Map::new();
-    if optional(draws, "density", &["g cm^-3", "Msun/kpc^3", "Msun pc**-3"], &[0], &mut toml) {
+    if optional(
+        draws,
+        "density",
+        &["g cm^-3", "Msun/kpc^3", "Msun pc**-3"],
+        &[0],
+        &mut toml,
+    ) {
         let form = draws.pick(&["comoving", "physical"]);
         toml.push_str(&format!("density_form = \"{form}\"\n"));
         forms.insert("density_form".to_string(), json!(form));
     }
-    let has_a = toml.lines().any(|line| line.starts_with("length") && line.contains("* a"));
-    if !has_a && draws.next() % 2 == 0 {
+    let has_a = toml
+        .lines()
+        .any(|line| line.starts_with("length") && line.contains("* a"));
+    if !has_a && draws.one_in(2) {
         let form = draws.pick(&["comoving", "physical"]);
         toml.push_str(&format!("positions = \"{form}\"\n"));
         forms.insert("positions".to_string(), json!(form));
     }
-    let velocity_forms = ["peculiar", "peculiar/sqrt(a)", "dx/dt", "a^2 dx/dt", "powers"];
+    let velocity_forms = [
+        "peculiar",
+        "peculiar/sqrt(a)",
+        "dx/dt",
+        "a^2 dx/dt",
+        "powers",
+    ];
     match draws.pick(&velocity_forms) {
         "powers" => {
             let (a, h) = (draws.between(-2.0, 2.0), draws.between(-1.0, 1.0));
@@ -189,12 +279,17 @@ fn system(draws: &mut Draws) -> Value {
             forms.insert("velocity_form".to_string(), json!(form));
         }
     }
-    if draws.next() % 3 == 0 {
+    if draws.one_in(3) {
         let a = draws.between(-2.0, 2.0);
         toml.push_str(&format!("internal_energy_form = {{ a = {a} }}\n"));
-        forms.insert("internal_energy_form".to_string(), json!({ "a": a, "h": 0.0 }));
+        forms.insert(
+            "internal_energy_form".to_string(),
+            json!({ "a": a, "h": 0.0 }),
+        );
     }
-    let solar_mass_g = (draws.next() % 3 == 0).then(|| draws.pick(&[1.989e33, 1.98892e33, 1.9885e33]));
+    let solar_mass_g = draws
+        .one_in(3)
+        .then(|| draws.pick(&[1.989e33, 1.98892e33, 1.9885e33]));
     if let Some(grams) = solar_mass_g {
         toml.push_str(&format!("solar_mass_in_grams = {grams:e}\n"));
     }
@@ -216,9 +311,17 @@ fn system(draws: &mut Draws) -> Value {
         Ok(config) => {
             let factors: serde_json::Map<String, Value> = Quantity::ALL
                 .iter()
-                .map(|quantity| (quantity.name().to_string(), json!(config.units.factor(*quantity, a))))
+                .map(|quantity| {
+                    (
+                        quantity.name().to_string(),
+                        json!(config.units.factor(*quantity, a)),
+                    )
+                })
                 .collect();
-            with(base, json!({ "factors": factors, "volume_mpc3": config.comoving_volume_mpc3() }))
+            with(
+                base,
+                json!({ "factors": factors, "volume_mpc3": config.comoving_volume_mpc3() }),
+            )
         }
     }
 }
@@ -232,11 +335,30 @@ fn with(mut base: Value, more: Value) -> Value {
 
 /// A grid of flat, curved, w ≠ -1 and radiation cases, and some drawn at random.
 fn cosmologies(draws: &mut Draws) -> Vec<Value> {
-    let mut all = vec![Parameters { h: 0.7, omega_matter: 0.3, omega_lambda: 0.7, omega_radiation: 0.0, w: -1.0 }];
-    for (omega_matter, omega_lambda) in [(0.3, 0.7), (1.0, 0.0), (0.3, 0.0), (0.25, 0.9), (0.4, 0.3), (1.3, 0.2)] {
+    let mut all = vec![Parameters {
+        h: 0.7,
+        omega_matter: 0.3,
+        omega_lambda: 0.7,
+        omega_radiation: 0.0,
+        w: -1.0,
+    }];
+    for (omega_matter, omega_lambda) in [
+        (0.3, 0.7),
+        (1.0, 0.0),
+        (0.3, 0.0),
+        (0.25, 0.9),
+        (0.4, 0.3),
+        (1.3, 0.2),
+    ] {
         for omega_radiation in [0.0, 8.4e-5, 1e-3] {
             for w in [-1.0, -0.8, -0.5, -1.3] {
-                all.push(Parameters { h: 0.7, omega_matter, omega_lambda, omega_radiation, w });
+                all.push(Parameters {
+                    h: 0.7,
+                    omega_matter,
+                    omega_lambda,
+                    omega_radiation,
+                    w,
+                });
             }
         }
     }
@@ -254,14 +376,23 @@ fn cosmologies(draws: &mut Draws) -> Vec<Value> {
 }
 
 fn cosmology(parameters: Parameters) -> Value {
-    let Parameters { h, omega_matter, omega_lambda, omega_radiation, w } = parameters;
+    let Parameters {
+        h,
+        omega_matter,
+        omega_lambda,
+        omega_radiation,
+        w,
+    } = parameters;
     let base = json!({ "kind": "cosmology", "h": h, "omega_matter": omega_matter, "omega_lambda": omega_lambda,
         "omega_radiation": omega_radiation, "w": w });
     let cosmology = match Cosmology::new(parameters) {
         Ok(cosmology) => cosmology,
         Err(error) => return with(base, json!({ "error": error.to_string() })),
     };
-    let redshifts = [-0.5, -0.3, 0.0, 0.1, 0.5, 1.0, 1.7, 2.0, 3.0, 4.5, 6.0, 8.0, 12.0, 20.0, 49.0, 127.0, 1100.0, 1e5];
+    let redshifts = [
+        -0.5, -0.3, 0.0, 0.1, 0.5, 1.0, 1.7, 2.0, 3.0, 4.5, 6.0, 8.0, 12.0, 20.0, 49.0, 127.0,
+        1100.0, 1e5,
+    ];
     let points: Vec<Value> = redshifts
         .into_iter()
         .map(|z| {
