@@ -23,6 +23,11 @@ impl Form {
 /// Powers of a and h beyond this are taken for a mistake.
 const LARGEST_POWER: f64 = 10.0;
 
+const KINDS: [(&str, Positions); 2] = [
+    ("comoving", Positions::Comoving),
+    ("physical", Positions::Physical),
+];
+
 /// Reads the section; `None` where it recorded a problem.
 pub(super) fn read(section: &mut Section) -> Option<Units> {
     let setting = section.setting();
@@ -99,16 +104,7 @@ impl Reader<'_> {
     /// The unit of length without the scale factor, and whether positions are comoving: stated by an `a` in
     /// the unit, or by `positions`, or else comoving wherever space expands.
     fn length(&mut self) -> (Option<Unit>, Positions) {
-        let stated = self
-            .section
-            .choice(
-                "positions",
-                &[
-                    ("comoving", Positions::Comoving),
-                    ("physical", Positions::Physical),
-                ],
-            )
-            .optional();
+        let stated = self.section.choice("positions", &KINDS).optional();
         let by_default = if self.setting.is_expanding {
             Positions::Comoving
         } else {
@@ -182,7 +178,7 @@ impl Reader<'_> {
                  or powers { a = .., h = .. } that make the number peculiar",
             );
         }
-        if self.refuses_scale_factor("velocity", "velocity_form") {
+        if self.refuses_scale_factor("velocity", Dimension::VELOCITY, "velocity_form") {
             return None;
         }
         self.quantity(
@@ -197,7 +193,11 @@ impl Reader<'_> {
         let form = self
             .form("internal_energy_form", &[("physical", Form::AS_IT_IS)])
             .unwrap_or(Form::AS_IT_IS);
-        if self.refuses_scale_factor("internal_energy", "internal_energy_form") {
+        if self.refuses_scale_factor(
+            "internal_energy",
+            Dimension::SPECIFIC_ENERGY,
+            "internal_energy_form",
+        ) {
             return;
         }
         let squared = velocity.map(|velocity| velocity.power(2.0));
@@ -208,22 +208,12 @@ impl Reader<'_> {
     /// must say which kind it is.
     fn density(&mut self, by_default: Option<Result<Unit, UnitError>>, positions: Positions) {
         let key = "density_form";
-        let stated = self
-            .section
-            .choice(
-                key,
-                &[
-                    ("comoving", Positions::Comoving),
-                    ("physical", Positions::Physical),
-                ],
-            )
-            .optional();
+        let stated = self.section.choice(key, &KINDS).optional();
         if stated == Some(Positions::Comoving) && !self.setting.is_expanding {
             self.section.refuse(
                 key,
                 "found \"comoving\", but [cosmology] says expanding = false; leave it out",
             );
-            return;
         }
         let has_unit = self.section.has("density");
         let carries_a = self
@@ -243,7 +233,9 @@ impl Reader<'_> {
                  into the unit",
             );
         }
-        let is_comoving = !carries_a && stated.unwrap_or(positions) == Positions::Comoving;
+        let is_comoving = self.setting.is_expanding
+            && !carries_a
+            && stated.unwrap_or(positions) == Positions::Comoving;
         let form = if is_comoving {
             Form::with_a(-3.0)
         } else {
@@ -274,16 +266,14 @@ impl Reader<'_> {
     }
 
     /// Where a key of its own holds the power of a, the unit must not hold it too.
-    fn refuses_scale_factor(&mut self, key: &str, form_key: &str) -> bool {
-        let has_it = self
-            .section
-            .unit_if_right(key)
-            .is_some_and(|unit| unit.a_power != 0.0);
+    fn refuses_scale_factor(&mut self, key: &str, dimension: Dimension, form_key: &str) -> bool {
+        let unit = self.section.unit_if_right(key);
+        let has_it = unit.is_some_and(|unit| unit.a_power != 0.0 && unit.dimension == dimension);
         if has_it {
-            self.section.refuse(
-                key,
-                format!("found the scale factor in the unit; expected it in {form_key}"),
-            );
+            // Asked for, so that it is not taken for an unknown key.
+            let _ = self.section.unit(key, dimension).optional();
+            let message = format!("found the scale factor in the unit; expected it in {form_key}");
+            self.section.refuse(key, message);
         }
         has_it
     }
