@@ -157,17 +157,9 @@ impl Words {
             | u64::from(u32::MAX - rank) << 16
             | (status as u64 & 0x7fff) << 1
             | 1;
-        let mut bytes = [0u8; TEXT_BYTES];
-        let mut end = text.len().min(TEXT_BYTES);
-        while !text.is_char_boundary(end) {
-            end -= 1;
-        }
+        let end = text.floor_char_boundary(TEXT_BYTES);
+        let bytes: &mut [u8] = bytemuck::cast_slice_mut(&mut cells[1..]);
         bytes[..end].copy_from_slice(&text.as_bytes()[..end]);
-        for (cell, chunk) in cells[1..].iter_mut().zip(bytes.chunks_exact(8)) {
-            *cell = chunk
-                .iter()
-                .fold(0, |word, &byte| word << 8 | u64::from(byte));
-        }
     }
 
     /// Reads the combined words.
@@ -207,15 +199,15 @@ fn read_text(cells: &[u64]) -> Option<Said> {
     if head == 0 {
         return None;
     }
-    let bytes: Vec<u8> = cells[1..]
+    let bytes: &[u8] = bytemuck::cast_slice(&cells[1..]);
+    let end = bytes
         .iter()
-        .flat_map(|word| word.to_be_bytes())
-        .take_while(|&byte| byte != 0)
-        .collect();
+        .position(|&byte| byte == 0)
+        .unwrap_or(bytes.len());
     Some(Said {
         rank: u32::MAX - (head >> 16) as u32,
         status: Status::from_number((head >> 1 & 0x7fff) as i32).unwrap_or(Status::Internal),
-        text: String::from_utf8_lossy(&bytes).into_owned(),
+        text: String::from_utf8_lossy(&bytes[..end]).into_owned(),
     })
 }
 

@@ -114,7 +114,8 @@ impl Run {
         array: Result<(ArrayShape, Lent), Fault>,
     ) -> Result<(), Fault> {
         self.call(|core| {
-            let species = find_species(species);
+            let name = species;
+            let species = find_species(name);
             if !core.is_measuring()? {
                 return Ok(());
             }
@@ -125,7 +126,9 @@ impl Run {
                 let (shape, lent) = array?;
                 core.lend(species, field, count, shape, lent)
             });
-            lent.map_err(|fault| core.refuse(species.ok(), fault))
+            // A mistyped species most likely meant the one with the nearest name: nothing is measured of half of it.
+            let meant = species.ok().or_else(|| nearest_species(name));
+            lent.map_err(|fault| core.refuse(meant, fault))
         })
     }
 
@@ -289,6 +292,10 @@ fn unknown<'a>(
 fn find_species(name: &str) -> Result<Species, Fault> {
     Species::find(name)
         .ok_or_else(|| unknown("species", name, SPECIES.iter().map(|(_, name)| *name), ""))
+}
+
+fn nearest_species(name: &str) -> Option<Species> {
+    nearest(name, SPECIES.iter().map(|(_, name)| *name)).and_then(Species::find)
 }
 
 fn find_field(name: &str) -> Result<Field, Fault> {

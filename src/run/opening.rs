@@ -46,7 +46,7 @@ pub struct Request {
     pub threads: usize,
     /// What is wrong with this rank's arguments: it fails the opening on every rank.
     pub fault: Option<Fault>,
-    /// May the config and the series of this rank be absent, since another rank's count?
+    /// Does it say where the config and the series are? Only rank 0 must.
     pub is_complete: bool,
 }
 
@@ -71,8 +71,8 @@ fn open_steps(
 ) -> Result<(Prepared, Option<Series>), Fault> {
     let is_first = team.rank() == 0;
     let config = share_config(team.as_mut(), request)?;
-    let own = match &request.fault {
-        Some(fault) => Err(fault.clone()),
+    let own = match request_fault(is_first, request) {
+        Some(fault) => Err(fault),
         None => config.and_then(|(path, text)| Prepared::new(&path, &text, request.threads)),
     };
     let prepared = agree(team.as_mut(), own)?;
@@ -83,6 +83,16 @@ fn open_steps(
     };
     let series = agree(team.as_mut(), series)?;
     Ok((prepared, series))
+}
+
+/// What is wrong with a rank's arguments; only rank 0 must say where config and series are.
+fn request_fault(is_first: bool, request: &Request) -> Option<Fault> {
+    if request.fault.is_none() && is_first && !request.is_complete {
+        let text =
+            "`config` or `series` is null; give the path of the config and of the series to write";
+        return Some(Fault::new(Status::BadArgument, text));
+    }
+    request.fault.clone()
 }
 
 /// Rank 0 reads the config and sends it; every rank gets its name and text, or the same error.
@@ -120,8 +130,8 @@ fn share_config(
 }
 
 fn read_config(request: &Request) -> Result<String, Fault> {
-    if let Some(fault) = &request.fault {
-        return Err(fault.clone());
+    if let Some(fault) = request_fault(true, request) {
+        return Err(fault);
     }
     if let Some(text) = &request.config.text {
         return Ok(text.clone());
@@ -159,13 +169,10 @@ fn agree<T>(team: &mut dyn Team, own: Result<T, Fault>) -> Result<T, Fault> {
         // Rank 0's failure to read the config leaves the others with nothing to say: they come last.
         let urgency = if fault.text.is_empty() { 1 } else { 2 };
         cells[0] = urgency << 32 | u64::from(u32::MAX - team.rank());
-        cells[1] = (fault.status as u64) << 32 | fault.text.len().min(TEXT_BYTES) as u64;
-        for (cell, chunk) in cells[2..].iter_mut().zip(fault.text.as_bytes().chunks(8)) {
-            *cell = chunk
-                .iter()
-                .rev()
-                .fold(0, |word, &byte| word << 8 | u64::from(byte));
-        }
+        let end = fault.text.floor_char_boundary(TEXT_BYTES);
+        cells[1] = (fault.status as u64) << 32 | end as u64;
+        let bytes: &mut [u8] = bytemuck::cast_slice_mut(&mut cells[2..]);
+        bytes[..end].copy_from_slice(&fault.text.as_bytes()[..end]);
     }
     let ticket = team.start(buffer).map_err(|error| lost(&error))?;
     let combined = team
@@ -183,12 +190,9 @@ fn agree<T>(team: &mut dyn Team, own: Result<T, Fault>) -> Result<T, Fault> {
     let cells = &combined[layout.range(said)];
     let rank = u32::MAX - cells[0] as u32;
     let status = Status::from_number((cells[1] >> 32) as i32).unwrap_or(Status::Internal);
-    let bytes: Vec<u8> = cells[2..]
-        .iter()
-        .flat_map(|word| word.to_le_bytes())
-        .take(cells[1] as u32 as usize)
-        .collect();
-    let text = String::from_utf8_lossy(&bytes);
+    let bytes: &[u8] = bytemuck::cast_slice(&cells[2..]);
+    let bytes = &bytes[..bytes.len().min(cells[1] as u32 as usize)];
+    let text = String::from_utf8_lossy(bytes);
     Fault::err(
         status,
         if rank == 0 {
@@ -288,6 +292,28 @@ fn bad_config(problems: &[Problem]) -> Fault {
     Fault::new(Status::BadConfig, lines.join("\n"))
 }
 
+/// What the numbers of the series rest on: kept in its manifest for people and programs.
+fn setting(config: &Config) -> serde_json::Value {
+    let cosmology = config.expansion.cosmology().map(|cosmology| {
+        let parameters = cosmology.parameters();
+        serde_json::json!({
+            "hubble_km_s_mpc": 100.0 * cosmology.h(),
+            "omega_matter": parameters.omega_matter,
+            "omega_lambda": parameters.omega_lambda,
+            "omega_radiation": parameters.omega_radiation,
+            "w": parameters.w,
+        })
+    });
+    serde_json::json!({
+        "units": config.statements(),
+        "cosmology": cosmology,
+        "comoving_volume_mpc3": config.comoving_volume_mpc3(),
+        "imf": config.imf.as_ref().map(|imf| format!("{:?}", imf.name)),
+        "return_fraction": config.imf.as_ref().and_then(|imf| imf.return_fraction),
+        "description": config.description,
+    })
+}
+
 fn open_series(prepared: &Prepared, request: &Request) -> Result<Series, Fault> {
     let opening = Opening {
         schema: crate::series::schema::Schema {
@@ -300,7 +326,7 @@ fn open_series(prepared: &Prepared, request: &Request) -> Result<Series, Fault> 
             "description": request.description,
         }),
         library_version: env!("CARGO_PKG_VERSION").to_string(),
-        setting: serde_json::json!({ "statements": prepared.config.statements() }),
+        setting: setting(&prepared.config),
         time_column: "time".to_string(),
         ..Opening::default()
     };
