@@ -70,6 +70,31 @@ impl Gauge for MassBudget {
             .add_slice(block.scalar(Field::Mass));
     }
 
+    fn carry(&self) -> Vec<u64> {
+        self.first.as_ref().map_or_else(Vec::new, |first| {
+            let present = first
+                .species
+                .iter()
+                .fold(0, |bits, species| bits | 1 << *species as u64);
+            std::iter::once(present)
+                .chain(first.total.cells().iter().copied())
+                .collect()
+        })
+    }
+
+    fn take_up(&mut self, words: &[u64], _is_last_row: bool) {
+        if let Some((present, cells)) = words.split_first() {
+            let is_present = |(species, _): (Species, &str)| {
+                (present >> species as u64 & 1 == 1).then_some(species)
+            };
+            let species = SPECIES.into_iter().filter_map(is_present).collect();
+            self.first = Some(First {
+                total: Total::from_cells(cells),
+                species,
+            });
+        }
+    }
+
     fn enter(&mut self, reading: &Reading, moment: &Moment, entry: &mut Entry) {
         let to_solar = moment.factors.mass / SOLAR_MASS;
         let mut total = Total::default();

@@ -42,6 +42,15 @@ pub trait Gauge: Send + Sync {
     /// Adds what this rank has tallied since the last row; most gauges have no use for tallies.
     fn take_tallies(&self, _book: &TallyBook, _sample: &mut Sample) {}
 
+    /// What the gauge must remember to go on exactly after a restart; stored at checkpoints.
+    fn carry(&self) -> Vec<u64> {
+        Vec::new()
+    }
+
+    /// Takes up what `carry` left in an earlier leg; `is_last_row` when that was the very row before the one
+    /// that comes now. Words that make no sense are ignored.
+    fn take_up(&mut self, _words: &[u64], _is_last_row: bool) {}
+
     /// Turns the sums of all ranks into one value for each of the gauge's columns, in the order in which
     /// they were declared, and any rows of its own tables.
     fn enter(&mut self, reading: &Reading, moment: &Moment, entry: &mut Entry);

@@ -112,6 +112,17 @@ impl Gauge for StarFormation {
         }
     }
 
+    fn carry(&self) -> Vec<u64> {
+        self.last_rate.map(f64::to_bits).into_iter().collect()
+    }
+
+    fn take_up(&mut self, words: &[u64], is_last_row: bool) {
+        self.last_rate = words
+            .first()
+            .filter(|_| is_last_row)
+            .map(|&bits| f64::from_bits(bits));
+    }
+
     fn enter(&mut self, reading: &Reading, moment: &Moment, entry: &mut Entry) {
         let rate = reading
             .is_measured(Species::Gas)

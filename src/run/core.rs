@@ -2,6 +2,7 @@
 
 use super::clock::Clock;
 use super::contribution::{Combined, Condition, StepWords, Words};
+use super::history::History;
 use super::lock;
 use super::rows::{Context, Scribe};
 use super::status::{Fault, Status};
@@ -79,6 +80,7 @@ pub(super) struct Parts {
     pub words: Words,
     /// On rank 0: turns combined sums into rows and hands them to the series.
     pub scribe: Option<Scribe>,
+    pub history: History,
 }
 
 /// The state of a run.
@@ -93,6 +95,8 @@ pub(super) struct Core {
     stage: Stage,
     lots: [Lot; Species::COUNT],
     layouts: Vec<(Species, Field, ArrayShape)>,
+    /// Rows of earlier legs, until the first row of this one.
+    history: Option<History>,
     /// The last clock that was accepted.
     last_clock: Option<Clock>,
     /// The clock of the last row of this leg, with ln a; none also after a step in error.
@@ -123,6 +127,7 @@ impl Core {
             sweep,
             words,
             scribe,
+            history,
         } = parts;
         Core {
             team,
@@ -135,6 +140,7 @@ impl Core {
             stage: Stage::Between,
             lots: Default::default(),
             layouts: Vec::new(),
+            history: Some(history),
             last_clock: None,
             last_row: None,
             flights: VecDeque::with_capacity(IN_FLIGHT + 1),
@@ -253,6 +259,21 @@ impl Core {
             return Fault::err(Status::BadOrder, text);
         }
         self.steps_since_row += 1;
+        if let (Some(history), Ok(clock)) = (&self.history, &clock) {
+            self.last_row = history
+                .last_row_before(clock.time, clock.step_length)
+                .and_then(|row| {
+                    let clock = Clock {
+                        step: row.step,
+                        time: row.time,
+                        step_length: row.step_length,
+                        synchronised: true,
+                        checkpoint: false,
+                    };
+                    let instant = self.config.clockwork.moment(row.time).ok()?;
+                    Some((clock, instant.ln_a))
+                });
+        }
         let step = clock.as_ref().ok().map(|clock| clock.step);
         match clock.and_then(|clock| Ok((clock, self.moment(&clock)?))) {
             Ok((clock, (moment, ln_a))) => {
@@ -459,6 +480,9 @@ impl Core {
                 active.gauge.take_tallies(&book, self.sweep.own_sample());
             }
             book.clear();
+        }
+        if let (Some(history), Some(scribe)) = (self.history.take(), &mut self.scribe) {
+            scribe.take_up(&history, &clock, &mut self.gauges);
         }
         let has_interval = self.last_row.is_some();
         let words = StepWords {

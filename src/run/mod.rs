@@ -7,6 +7,7 @@
 mod clock;
 mod contribution;
 mod core;
+mod history;
 mod opening;
 mod rows;
 mod status;

@@ -3,6 +3,7 @@
 use super::Run;
 use super::contribution::Words;
 use super::core::{Core, Parts};
+use super::history::History;
 use super::rows::{self, Scribe};
 use super::status::{Fault, Status};
 use crate::config::{Config, Problem};
@@ -11,6 +12,7 @@ use crate::series::{Opening, Series};
 use crate::sweep::Sweep;
 use crate::team::cells::{Kind, Layout};
 use crate::team::{Team, TeamError};
+use std::path::Path;
 use std::time::Duration;
 
 /// How long a rank waits for the others to open.
@@ -57,7 +59,7 @@ pub struct Request {
 pub fn open(mut team: Box<dyn Team>, request: Request) -> Result<Run, Fault> {
     let result = open_steps(&mut team, &request);
     match result {
-        Ok((prepared, series)) => Ok(prepared.into_run(team, series)),
+        Ok((prepared, series, history)) => Ok(prepared.into_run(team, series, history)),
         Err(fault) => {
             team.leave();
             Err(fault)
@@ -68,7 +70,7 @@ pub fn open(mut team: Box<dyn Team>, request: Request) -> Result<Run, Fault> {
 fn open_steps(
     team: &mut Box<dyn Team>,
     request: &Request,
-) -> Result<(Prepared, Option<Series>), Fault> {
+) -> Result<(Prepared, Option<Series>, History), Fault> {
     let is_first = team.rank() == 0;
     let config = share_config(team.as_mut(), request)?;
     let own = match request_fault(is_first, request) {
@@ -76,13 +78,26 @@ fn open_steps(
         None => config.and_then(|(path, text)| Prepared::new(&path, &text, request.threads)),
     };
     let prepared = agree(team.as_mut(), own)?;
+    let mut history = if is_first {
+        History::read(Path::new(&request.series))
+    } else {
+        History::default()
+    };
     let series = if is_first {
         open_series(&prepared, request).map(Some)
     } else {
         Ok(None)
     };
     let series = agree(team.as_mut(), series)?;
-    Ok((prepared, series))
+    if team.size() > 1 {
+        let mut bytes = history.to_bytes();
+        team.broadcast(0, &mut bytes)
+            .map_err(|error| lost(&error))?;
+        if !is_first {
+            history = History::from_bytes(&bytes);
+        }
+    }
+    Ok((prepared, series, history))
 }
 
 /// What is wrong with a rank's arguments; only rank 0 must say where config and series are.
@@ -252,7 +267,7 @@ impl Prepared {
         })
     }
 
-    fn into_run(self, team: Box<dyn Team>, series: Option<Series>) -> Run {
+    fn into_run(self, team: Box<dyn Team>, series: Option<Series>, history: History) -> Run {
         let Prepared {
             config,
             plan,
@@ -271,6 +286,7 @@ impl Prepared {
                 sweep,
                 words,
                 scribe,
+                history,
             }),
             tallies,
         )

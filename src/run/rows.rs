@@ -2,6 +2,7 @@
 
 use super::clock::Clock;
 use super::contribution::{Combined, Condition, Words};
+use super::history::History;
 use super::status::{Fault, Status};
 use crate::config::{Config, Coordinate};
 use crate::gauges::{Active, Entry, Moment, Plan, Presence, Reading, Reduced};
@@ -226,6 +227,7 @@ pub(super) struct Scribe {
     series: Series,
     /// Gaps already told as an event.
     told: HashSet<(usize, Species, Option<Field>)>,
+    has_entered: bool,
     last_step: u64,
     last_time: f64,
     durable: Result<(), SeriesError>,
@@ -237,10 +239,28 @@ impl Scribe {
         Scribe {
             series,
             told: HashSet::new(),
+            has_entered: false,
             last_step: 0,
             last_time: 0.0,
             durable: Ok(()),
             complaint: None,
+        }
+    }
+
+    /// Lets the gauges of the first row of a leg take up what earlier legs left.
+    pub fn take_up(&mut self, history: &History, first: &Clock, gauges: &mut [Active]) {
+        let Some(state) = history.last_state_before(first.time, first.step_length) else {
+            return;
+        };
+        let last = history.last_row_before(first.time, first.step_length);
+        let is_last_row = last.is_some_and(|row| row.time == state.time);
+        for (name, words) in read_carry(&state.words) {
+            if let Some(active) = gauges
+                .iter_mut()
+                .find(|active| name_word(&active.name) == name)
+            {
+                active.gauge.take_up(words, is_last_row);
+            }
         }
     }
 
@@ -316,7 +336,12 @@ impl Scribe {
                 .into_iter()
                 .map(|(source, text)| event_row(moment.step, moment.time, source, text)),
         );
-        if context.clock.is_some_and(|clock| clock.checkpoint) {
+        let is_checkpoint = context.clock.is_some_and(|clock| clock.checkpoint);
+        if is_checkpoint || !self.has_entered {
+            write_carry(gauges, &mut record.carry);
+        }
+        self.has_entered = true;
+        if is_checkpoint {
             self.durable = self.series.enter_durably(record, DURABLE_PATIENCE);
         } else if let Err(error) = self.series.enter(record) {
             self.complaint = Some(error);
@@ -399,6 +424,38 @@ impl Scribe {
             .close(CLOSE_PATIENCE)
             .map_err(|error| fault(&error))
     }
+}
+
+/// A gauge's name as one word, by which it finds its state again.
+fn name_word(name: &str) -> u64 {
+    u64::from(crc32c::crc32c(name.as_bytes()))
+}
+
+/// Appends what every gauge must remember: its name, the number of its words, the words.
+fn write_carry(gauges: &[Active], into: &mut Vec<u64>) {
+    for active in gauges {
+        let words = active.gauge.carry();
+        if !words.is_empty() {
+            into.extend([name_word(&active.name), words.len() as u64]);
+            into.extend(words);
+        }
+    }
+}
+
+/// Splits carried words into gauges; stops where they make no sense.
+fn read_carry(mut words: &[u64]) -> Vec<(u64, &[u64])> {
+    let mut parts = Vec::new();
+    while let [name, length, rest @ ..] = words {
+        let Some((own, rest)) = usize::try_from(*length)
+            .ok()
+            .and_then(|length| rest.split_at_checked(length))
+        else {
+            break;
+        };
+        parts.push((*name, own));
+        words = rest;
+    }
+    parts
 }
 
 /// The status and text that a host gets for an error of the series.
