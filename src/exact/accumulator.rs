@@ -1,16 +1,23 @@
-//! The fast way in: takes doubles one after the other on one thread.
+//! The way in: takes doubles on one thread, a few hundred at a time where it can.
 
 use super::total::Total;
+use super::window::{self, LARGEST};
 
 /// Digits of 32 bits held in 64-bit integers; the upper halves take up carries until they are spread.
 const DIGITS: usize = 2 * crate::team::cells::WIDE_LIMBS;
-/// Every addition puts less than 2^32 on a digit, so this many fit before a digit could overflow.
-const ROOM: u32 = 1 << 30;
+/// Every addition puts less than 2^33 on a digit, so this many fit before a digit could overflow.
+const ROOM: u32 = 1 << 29;
+/// Values that come one by one are held back until so many are there.
+const HELD: usize = 64;
+/// The exponent of the lowest bit of a total.
+const LOWEST: i32 = -1074;
 
 /// Adds doubles without any rounding.
 #[derive(Clone)]
 pub struct Accumulator {
     digits: [i64; DIGITS],
+    held: [f64; HELD],
+    holding: usize,
     since_spread: u32,
     left_out: u64,
 }
@@ -19,6 +26,8 @@ impl Default for Accumulator {
     fn default() -> Self {
         Accumulator {
             digits: [0; DIGITS],
+            held: [0.0; HELD],
+            holding: 0,
             since_spread: 0,
             left_out: 0,
         }
@@ -29,22 +38,73 @@ impl Accumulator {
     /// Adds one value exactly; a NaN or an infinity is left out and counted.
     #[inline]
     pub fn add(&mut self, value: f64) {
+        if self.holding == HELD {
+            self.settle();
+        }
+        self.held[self.holding] = value;
+        self.holding += 1;
+    }
+
+    /// Adds every value of a slice exactly.
+    pub fn add_slice(&mut self, values: &[f64]) {
+        if values.len() < HELD / 2 {
+            values.iter().for_each(|&value| self.add(value));
+        } else {
+            values
+                .chunks(LARGEST)
+                .for_each(|chunk| self.add_chunk(chunk));
+        }
+    }
+
+    /// Adds the values that are held back.
+    fn settle(&mut self) {
+        let held = self.held;
+        let holding = std::mem::take(&mut self.holding);
+        self.add_chunk(&held[..holding]);
+    }
+
+    fn add_chunk(&mut self, values: &[f64]) {
+        let Some(window) = window::window_for(window::largest_magnitude(values)) else {
+            return values.iter().for_each(|&value| self.add_slowly(value));
+        };
+        let sums = window::sum_in(values, window);
+        self.add_integer(sums.high, window.high);
+        self.add_integer(sums.low, window.low);
+        if sums.remainder {
+            for &value in values {
+                self.add_slowly(window::remainder(value, window));
+            }
+        }
+    }
+
+    /// Adds one value whatever it is.
+    fn add_slowly(&mut self, value: f64) {
         let bits = value.to_bits();
-        let exponent = (bits >> 52) & 0x7ff;
+        let exponent = ((bits >> 52) & 0x7ff) as i32;
         if exponent == 0x7ff {
             self.left_out += 1;
             return;
         }
-        let fraction = bits & ((1 << 52) - 1);
+        let fraction = (bits & ((1 << 52) - 1)) as i64;
         let mantissa = if exponent == 0 {
             fraction
         } else {
             fraction | (1 << 52)
         };
-        let shift = exponent.saturating_sub(1) as usize;
-        let spread = u128::from(mantissa) << (shift % 32);
-        // 53 bits moved by up to 31 reach into at most three digits.
-        let sign = (bits as i64) >> 63;
+        let signed = if value.is_sign_negative() {
+            -mantissa
+        } else {
+            mantissa
+        };
+        self.add_integer(signed, LOWEST + (exponent - 1).max(0));
+    }
+
+    /// Adds `integer` · 2^`place`, for places from the lowest bit of a total up.
+    fn add_integer(&mut self, integer: i64, place: i32) {
+        let shift = (place - LOWEST) as usize;
+        // 63 bits moved by up to 31 reach into at most three digits.
+        let spread = u128::from(integer.unsigned_abs()) << (shift % 32);
+        let sign = integer >> 63;
         let signed = |part: u128| ((part & 0xffff_ffff) as i64 ^ sign) - sign;
         let digits = &mut self.digits[shift / 32..shift / 32 + 3];
         digits[0] += signed(spread);
@@ -56,17 +116,11 @@ impl Accumulator {
         }
     }
 
-    /// Adds every value of a slice.
-    pub fn add_slice(&mut self, values: &[f64]) {
-        for &value in values {
-            self.add(value);
-        }
-    }
-
     /// Adds everything another accumulator holds.
     pub fn merge(&mut self, other: &Accumulator) {
         self.spread();
         let mut other = other.clone();
+        other.settle();
         other.spread();
         self.digits
             .iter_mut()
@@ -78,7 +132,11 @@ impl Accumulator {
 
     /// How many values were left out because they were not finite.
     pub fn left_out(&self) -> u64 {
-        self.left_out
+        let held = self.held[..self.holding]
+            .iter()
+            .filter(|value| !value.is_finite())
+            .count();
+        self.left_out + held as u64
     }
 
     /// Moves what exceeds 32 bits of each digit up to the next.
@@ -96,6 +154,11 @@ impl Accumulator {
 
     /// The exact sum so far.
     pub fn total(&self) -> Total {
+        if self.holding > 0 {
+            let mut settled = self.clone();
+            settled.settle();
+            return settled.total();
+        }
         let mut total = Total::default();
         let mut carry = 0i64;
         for (limb, pair) in total
@@ -113,7 +176,10 @@ impl Accumulator {
 
     /// Forgets everything.
     pub fn clear(&mut self) {
-        *self = Accumulator::default();
+        self.digits = [0; DIGITS];
+        self.holding = 0;
+        self.since_spread = 0;
+        self.left_out = 0;
     }
 }
 
@@ -187,6 +253,25 @@ mod tests {
             let sum: i128 = values.iter().map(|&(m, e)| i128::from(m) << e).sum();
             // `as` rounds to nearest even; scaling by a power of two is exact in this range.
             prop_assert_eq!(exact(&floats), sum as f64 * unit);
+        }
+
+        /// Values of very different size in one slice: those that leave both words are caught.
+        #[test]
+        fn the_quick_way_equals_the_slow_one(
+            values in proptest::collection::vec(proptest::num::f64::ANY, 0..2500),
+            narrow in proptest::collection::vec(-1e3f64..1e3, 0..1500),
+        ) {
+            for values in [&values, &narrow, &[&narrow[..], &values[..]].concat()] {
+                let mut quick = Accumulator::default();
+                quick.add_slice(values);
+                let mut slow = Accumulator::default();
+                values.iter().for_each(|&value| slow.add_slowly(value));
+                prop_assert_eq!(quick.total(), slow.total());
+                prop_assert_eq!(quick.left_out(), slow.left_out());
+                let mut single = Accumulator::default();
+                values.iter().for_each(|&value| single.add(value));
+                prop_assert_eq!(single.total(), slow.total());
+            }
         }
 
         #[test]

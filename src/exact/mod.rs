@@ -7,6 +7,7 @@
 
 mod accumulator;
 mod total;
+mod window;
 
 pub use accumulator::Accumulator;
 pub use total::Total;
