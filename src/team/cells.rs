@@ -30,8 +30,8 @@ pub enum Kind {
     Max = 2,
     /// Each item of [`WIDE_LIMBS`] cells: addition with carry.
     Wide = 3,
-    /// One list: the largest items of both, largest first, compared cell by cell from the first;
-    /// an item whose first cell is 0 is empty.
+    /// One list: the largest items of both, largest first, compared cell by cell from the first; an item
+    /// whose first cell is 0 counts as empty.
     Top = 4,
     /// One item: the one with the larger first cell (0: nothing said); equal ones compare on.
     Word = 5,
@@ -58,7 +58,9 @@ impl Segment {
     }
 
     fn encode(self) -> u64 {
-        ((self.kind as u64) << 56) | ((self.words as u64 & 0xff_ffff) << 32) | (self.items as u64 & 0xffff_ffff)
+        ((self.kind as u64) << 56)
+            | ((self.words as u64 & 0xff_ffff) << 32)
+            | (self.items as u64 & 0xffff_ffff)
     }
 
     fn decode(cell: u64) -> Option<Segment> {
@@ -83,9 +85,13 @@ pub struct Layout {
 pub struct Part(usize);
 
 impl Layout {
-    /// Adds a segment of `items` items of `words` cells each.
+    /// Adds a segment of `items` items of `words` cells each (below 2^24 words, 2^32 items).
     pub fn add(&mut self, kind: Kind, words: usize, items: usize) -> Part {
-        let words = if kind == Kind::Wide { WIDE_LIMBS } else { words.max(1) };
+        let words = if kind == Kind::Wide {
+            WIDE_LIMBS
+        } else {
+            words.max(1)
+        };
         let segment = Segment { kind, words, items };
         self.segments.push(segment);
         self.offsets.push(self.body);
@@ -127,7 +133,11 @@ impl Layout {
         cells.len() == self.len()
             && cells[0] == MAGIC
             && cells[1] == self.segments.len() as u64
-            && self.segments.iter().zip(&cells[2..]).all(|(segment, &cell)| segment.encode() == cell)
+            && self
+                .segments
+                .iter()
+                .zip(&cells[2..])
+                .all(|(segment, &cell)| segment.encode() == cell)
     }
 }
 
@@ -142,14 +152,18 @@ pub fn combine(other: &[u64], into: &mut [u64]) {
         Some(&count) if count <= into.len() as u64 => 2 + count as usize,
         _ => return into[0] = MISMATCH,
     };
-    let same = other.len() == into.len() && head <= into.len() && into[0] == MAGIC && other[..head] == into[..head];
+    let same = other.len() == into.len()
+        && head <= into.len()
+        && into[0] == MAGIC
+        && other[..head] == into[..head];
     if !same {
         return into[0] = MISMATCH;
     }
     let (head_cells, mut into) = into.split_at_mut(head);
     let mut other = &other[head..];
     for &cell in &head_cells[2..] {
-        let Some(segment) = Segment::decode(cell).filter(|segment| segment.cells() <= into.len()) else {
+        let Some(segment) = Segment::decode(cell).filter(|segment| segment.cells() <= into.len())
+        else {
             return head_cells[0] = MISMATCH;
         };
         let (mine, rest) = into.split_at_mut(segment.cells());
@@ -162,8 +176,14 @@ pub fn combine(other: &[u64], into: &mut [u64]) {
 
 fn combine_segment(segment: Segment, theirs: &[u64], mine: &mut [u64]) {
     match segment.kind {
-        Kind::Sum => mine.iter_mut().zip(theirs).for_each(|(m, t)| *m = m.wrapping_add(*t)),
-        Kind::Max => mine.iter_mut().zip(theirs).for_each(|(m, t)| *m = (*m).max(*t)),
+        Kind::Sum => mine
+            .iter_mut()
+            .zip(theirs)
+            .for_each(|(m, t)| *m = m.wrapping_add(*t)),
+        Kind::Max => mine
+            .iter_mut()
+            .zip(theirs)
+            .for_each(|(m, t)| *m = (*m).max(*t)),
         Kind::Wide => mine
             .chunks_exact_mut(segment.words)
             .zip(theirs.chunks_exact(segment.words))
@@ -188,10 +208,23 @@ pub fn add_with_carry(into: &mut [u64], other: &[u64]) {
     }
 }
 
-/// Inserts every item of `theirs` into the descending list `mine`, which keeps its length.
+/// Inserts every item of `theirs` into the list `mine`, which keeps its length and ends in descending order.
 fn merge_top(words: usize, theirs: &[u64], mine: &mut [u64]) {
-    for item in theirs.chunks_exact(words).filter(|item| item[0] != 0) {
+    put_in_order(words, mine);
+    for item in theirs.chunks_exact(words) {
         insert_top(words, item, mine);
+    }
+}
+
+/// Lists are descending already unless a contribution was made wrongly; then the result would depend on
+/// which rank it came from.
+fn put_in_order(words: usize, list: &mut [u64]) {
+    for end in (words..list.len()).step_by(words) {
+        let (ordered, rest) = list.split_at(end);
+        let item = &rest[..words];
+        if let Some(place) = ordered.chunks_exact(words).position(|held| item > held) {
+            list[place * words..end + words].rotate_right(words);
+        }
     }
 }
 

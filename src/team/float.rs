@@ -21,7 +21,10 @@ impl FloatGuard {
     /// no flushing to zero, flags clear, extended precision in the old unit.
     #[inline]
     pub fn enter() -> FloatGuard {
-        let mut guard = FloatGuard { mxcsr: 0, x87: [0; 7] };
+        let mut guard = FloatGuard {
+            mxcsr: 0,
+            x87: [0; 7],
+        };
         let default_mxcsr: u32 = 0x1F80;
         // SAFETY: the instructions store to and load from memory owned by `guard` and this frame, and
         // change nothing but the floating-point environment, which `drop` restores. `fninit` empties the

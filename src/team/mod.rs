@@ -7,6 +7,7 @@
 pub mod alone;
 pub mod cells;
 pub mod float;
+pub mod library;
 #[cfg(feature = "mpi")]
 pub mod mpi;
 pub mod thread;
@@ -23,6 +24,32 @@ pub enum TeamError {
     /// The other ranks did not take part within the patience given.
     Overdue,
 }
+
+impl TeamError {
+    fn no_such_member(rank: u32, size: u32) -> TeamError {
+        TeamError::Failed(format!(
+            "member {rank} was named in a team of {size} (members are numbered from 0)"
+        ))
+    }
+
+    fn not_in_flight(ticket: Ticket) -> TeamError {
+        TeamError::Failed(format!(
+            "reduction {} is not the oldest unfinished one; reductions are finished once, in the order they started",
+            ticket.0
+        ))
+    }
+}
+
+impl std::fmt::Display for TeamError {
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        match self {
+            TeamError::Failed(text) => f.write_str(text),
+            TeamError::Overdue => f.write_str("the other ranks did not take part in time"),
+        }
+    }
+}
+
+impl std::error::Error for TeamError {}
 
 /// Processes that reduce together. One implementation a way of communicating.
 ///
@@ -42,7 +69,11 @@ pub trait Team: Send {
     fn is_complete(&mut self, ticket: Ticket) -> Result<bool, TeamError>;
     /// Waits for the oldest unfinished reduction, at most `patience`, and returns the combined cells.
     /// On `Overdue` the ticket stays valid. Not collective in itself.
-    fn finish(&mut self, ticket: Ticket, patience: std::time::Duration) -> Result<Vec<u64>, TeamError>;
+    fn finish(
+        &mut self,
+        ticket: Ticket,
+        patience: std::time::Duration,
+    ) -> Result<Vec<u64>, TeamError>;
     /// May communication still happen (MPI not finalised, no earlier failure)? Not collective.
     fn is_usable(&self) -> bool;
     /// Lets go of the communicator. With reductions unfinished their buffers are leaked on purpose

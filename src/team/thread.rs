@@ -2,8 +2,18 @@
 //! default floating-point control (a new thread inherits its creator's), and a name that debuggers show.
 
 use super::float::FloatGuard;
+use std::cell::Cell;
 use std::io;
 use std::thread::JoinHandle;
+
+thread_local! {
+    static OURS: Cell<bool> = const { Cell::new(false) };
+}
+
+/// Is the present thread one of ours? A panic in it is then not for the host's terminal.
+pub fn is_ours() -> bool {
+    OURS.try_with(Cell::get).unwrap_or(false)
+}
 
 /// Starts a thread that runs `body` with every signal blocked and default floating-point control.
 ///
@@ -14,10 +24,13 @@ pub fn spawn<T: Send + 'static>(
     body: impl FnOnce() -> T + Send + 'static,
 ) -> io::Result<JoinHandle<T>> {
     let blocked = SignalsBlocked::now();
-    let handle = std::thread::Builder::new().name(name.to_string()).spawn(move || {
-        let _control = FloatGuard::enter();
-        body()
-    });
+    let handle = std::thread::Builder::new()
+        .name(name.to_string())
+        .spawn(move || {
+            let _control = FloatGuard::enter();
+            OURS.set(true);
+            body()
+        });
     drop(blocked);
     handle
 }
@@ -47,7 +60,11 @@ impl Drop for SignalsBlocked {
     fn drop(&mut self) {
         // SAFETY: `before` was filled by the call in `now`.
         unsafe {
-            libc::pthread_sigmask(libc::SIG_SETMASK, &raw const self.before, std::ptr::null_mut());
+            libc::pthread_sigmask(
+                libc::SIG_SETMASK,
+                &raw const self.before,
+                std::ptr::null_mut(),
+            );
         }
     }
 }
