@@ -1,5 +1,7 @@
 //! Opening a series either works or says what is in the way and what to do about it.
 
+#![allow(clippy::expect_used)]
+
 use limnograph::series::record::{Record, Row, Value};
 use limnograph::series::schema::{Column, Kind, Schema, Table, ValueType};
 use limnograph::series::{Opening, Series, Trouble};

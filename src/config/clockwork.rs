@@ -71,6 +71,11 @@ pub struct Clockwork {
 }
 
 impl Clockwork {
+    /// Seconds in the host's unit of time, where the coordinate is a time.
+    pub fn unit_seconds(&self) -> f64 {
+        self.unit_seconds
+    }
+
     /// What the host's time `time` means.
     ///
     /// # Errors

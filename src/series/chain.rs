@@ -107,6 +107,10 @@ impl Chain {
             self.disk.sync_directory(&self.directory)?;
             self.directory_unsynced = false;
         }
+        self.sync_journal()
+    }
+
+    fn sync_journal(&mut self) -> io::Result<bool> {
         let Some(journal) = self.journal.as_mut() else {
             return Ok(false);
         };
@@ -143,25 +147,33 @@ impl Chain {
         let Some(journal) = self.journal.as_mut() else {
             return Err(io::Error::other("there is no journal to write"));
         };
-        match journal.append(&mut self.scratch, kind, payload) {
-            Ok(()) => {
-                self.unsynced
-                    .push(kind, payload, self.limits.unsynced_bytes);
-                self.first_unsynced.get_or_insert_with(Instant::now);
-                Ok(())
-            }
-            Err(error) => {
-                let (failures, records) = (journal.failures, journal.records);
-                let is_full = matches!(error.raw_os_error(), Some(libc::ENOSPC | libc::EDQUOT));
-                let is_too_long = error.raw_os_error() == Some(libc::EFBIG);
-                if records > 0 && (is_too_long || (failures >= FAILURES_UNTIL_NEXT && !is_full))
-                    || !journal.is_in_place()
-                {
-                    self.retire_for_failure(&format!("it could not be written: {error}"));
+        let Err(error) = journal.append(&mut self.scratch, kind, payload) else {
+            self.unsynced
+                .push(kind, payload, self.limits.unsynced_bytes);
+            self.first_unsynced.get_or_insert_with(Instant::now);
+            return Ok(());
+        };
+        let reason = format!("it could not be written: {error}");
+        let (failures, records) = (journal.failures, journal.records);
+        if !journal.is_in_place() {
+            self.retire_for_failure(&reason);
+        } else if records > 0 {
+            match error.raw_os_error() {
+                // What is in the file stays there if it can be made sure of: written again it would fill the
+                // next file just as far.
+                Some(libc::EFBIG) => {
+                    let is_safe = self.sync_journal().is_ok();
+                    if is_safe {
+                        self.retire(&reason);
+                    }
                 }
-                Err(error)
+                // Another file on a full disk is no better than this one.
+                Some(libc::ENOSPC | libc::EDQUOT) => {}
+                _ if failures >= FAILURES_UNTIL_NEXT => self.retire_for_failure(&reason),
+                _ => {}
             }
         }
+        Err(error)
     }
 
     /// There is a journal with a head, and what has to be written again is in it.

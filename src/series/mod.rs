@@ -20,6 +20,7 @@ mod status;
 mod writer;
 
 pub use error::{SeriesError, Trouble};
+pub use fit::check_schema;
 pub use status::Status;
 
 use crate::team::thread;
