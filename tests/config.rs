@@ -91,6 +91,20 @@ fn the_examples_of_the_manual_are_right() {
 }
 
 #[test]
+fn the_config_of_the_readme_is_right() {
+    let page = include_str!("../README.md");
+    let blocks: Vec<&str> = page
+        .split("```toml\n")
+        .skip(1)
+        .filter_map(|rest| rest.split("```").next())
+        .collect();
+    assert!(!blocks.is_empty());
+    for block in blocks {
+        parse(block);
+    }
+}
+
+#[test]
 fn a_config_says_in_plain_words_what_it_comes_to() {
     let lines = parse(&examples()[0]).statements();
     // 1/0.7 Mpc in cm; 1e10 solar masses over 0.7; the age of the reference list; (25/0.7)³.
