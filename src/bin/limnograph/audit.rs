@@ -119,7 +119,7 @@ fn tell_files(reader: &SeriesReader, out: &mut dyn Write) -> Result<(), Failure>
             .unwrap_or(&manifest.config_sha256);
         writeln!(
             out,
-            "  manifest of leg {}: config {}…",
+            "  manifest of leg {}: config with SHA-256 {}…",
             manifest.leg,
             harmless(config)
         )?;

@@ -27,6 +27,17 @@ pub fn number(value: f64) -> String {
     format!("{digits}e{exponent}")
 }
 
+/// A share with two significant digits, or none where that would be finer than it matters.
+pub fn percent(share: f64) -> String {
+    let percent = 100.0 * share;
+    match percent {
+        percent if percent >= 10.0 => format!("{percent:.0} %"),
+        percent if percent >= 1.0 => format!("{percent:.1} %"),
+        percent if percent >= 0.01 || percent <= 0.0 => format!("{percent:.2} %"),
+        _ => "less than 0.01 %".to_string(),
+    }
+}
+
 /// A cell that is not null; increments carry a plus sign.
 pub fn value(value: &Value, kind: Kind) -> String {
     let text = match value {

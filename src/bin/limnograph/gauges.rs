@@ -39,7 +39,7 @@ pub fn sections(reader: &SeriesReader, run: &TableView<'_>, screen: &Screen) -> 
 fn section(run: &TableView<'_>, gauge: &str, reasons: &Reasons, screen: &Screen) -> Section {
     let layout = Layout::for_columns(run, screen);
     let mut lines = Vec::new();
-    let mut unmeasured: Vec<&Column> = Vec::new();
+    let mut nulls: Vec<&Column> = Vec::new();
     let last = run.rows().saturating_sub(1);
     for (index, merged) in run.columns().iter().enumerate() {
         let column = &merged.column;
@@ -48,7 +48,7 @@ fn section(run: &TableView<'_>, gauge: &str, reasons: &Reasons, screen: &Screen)
         }
         let latest = run.column_rows(index, last..run.rows()).value(0);
         if latest == Value::Null {
-            unmeasured.push(column);
+            nulls.push(column);
             continue;
         }
         lines.push(layout.line(
@@ -58,7 +58,7 @@ fn section(run: &TableView<'_>, gauge: &str, reasons: &Reasons, screen: &Screen)
             &run.column_rows(index, 0..run.rows()),
         ));
     }
-    if let Some(first) = unmeasured.first() {
+    if let Some(first) = nulls.first() {
         lines.push(layout.unmeasured_line(screen, first, unmeasured.len() - 1, reasons.of(gauge)));
     }
     Section {
@@ -124,27 +124,27 @@ impl Layout {
             format!("  {name:<name_width$} {value:>VALUE_WIDTH$} {unit:<unit_width$} {curve}");
         line.trim_end().to_string()
     }
+}
 
-    fn unmeasured_line(
-        &self,
-        screen: &Screen,
-        first: &Column,
-        others: usize,
-        reason: Option<&str>,
-    ) -> String {
-        let others = if others > 0 {
-            format!(" and {others} more")
-        } else {
-            String::new()
-        };
-        let name = screen.cut(
-            &harmless(&first.name),
-            self.name.saturating_sub(others.len()).max(12),
-        );
-        let reason = reason.map_or(String::new(), |reason| format!(": {}", harmless(reason)));
-        let text = format!("{name}{others}  not measured{reason}");
-        screen.faint(&format!("  {}", screen.cut(&text, screen.width - 2)))
+/// What was not measured, and why when that is known; on a second line when one is too short.
+fn unmeasured(screen: &Screen, first: &Column, others: usize, reason: Option<&str>) -> Vec<String> {
+    let others = if others > 0 {
+        format!(" and {others} more")
+    } else {
+        String::new()
+    };
+    let name = harmless(&first.name);
+    let reason = reason.map(harmless).unwrap_or_default();
+    let mut lines = vec![format!("  {name}{others}: not measured")];
+    if lines[0].chars().count() + 2 + reason.chars().count() <= screen.width && !reason.is_empty() {
+        lines[0].push_str(&format!(": {reason}"));
+    } else if !reason.is_empty() {
+        lines.push(format!("    {reason}"));
     }
+    lines
+        .iter()
+        .map(|line| screen.faint(&screen.cut(line, screen.width)))
+        .collect()
 }
 
 /// What the table of events says about each gauge.

@@ -36,9 +36,7 @@ pub fn section(table: &TableView<'_>, run: &TableView<'_>, screen: &Screen) -> O
         return None;
     }
     let items = Items::gather(table, &keys);
-    let mut chosen = items.choose(&others, table, screen, &keys);
-    let curve_of = items.liveliest(&chosen);
-    chosen.sort_unstable();
+    let (chosen, curve_of) = items.choose(&others, table, screen, &keys);
     Some(items.draw(table, screen, &keys, &chosen, curve_of))
 }
 
@@ -112,37 +110,40 @@ impl Items {
         total / self.rows.len().max(1) as f64
     }
 
-    fn liveliest(&self, columns: &[usize]) -> Option<usize> {
-        columns
-            .iter()
-            .copied()
-            .max_by(|&one, &other| self.liveliness(one).total_cmp(&self.liveliness(other)))
-    }
-
-    /// As many columns as fit: one that describes the items and hardly changes, then the liveliest.
+    /// As many columns as fit, and which of them gets a curve: first one that describes the items and hardly
+    /// changes, then the liveliest.
     fn choose(
         &self,
         columns: &[usize],
         table: &TableView<'_>,
         screen: &Screen,
         keys: &[usize],
-    ) -> Vec<usize> {
-        let mut by_life: Vec<usize> = columns.to_vec();
-        by_life.sort_by(|&one, &other| self.liveliness(other).total_cmp(&self.liveliness(one)));
-        if let Some(calmest) = by_life.pop() {
-            by_life.insert(0, calmest);
+    ) -> (Vec<usize>, Option<usize>) {
+        // Rounded, so that columns that go alike stay in the order of the table.
+        let life = |column: usize| (self.liveliness(column) * 100.0).round() as u64;
+        let mut ranked: Vec<(u64, usize)> = columns
+            .iter()
+            .map(|&column| (life(column), column))
+            .collect();
+        ranked.sort_by_key(|&(life, column)| (std::cmp::Reverse(life), column));
+        let liveliest = ranked.first().map(|&(_, column)| column);
+        let mut order: Vec<usize> = ranked.into_iter().map(|(_, column)| column).collect();
+        if let Some(calmest) = order.pop() {
+            order.insert(0, calmest);
         }
         let used: usize = keys.iter().map(|&key| self.width(table, key) + 2).sum();
-        let mut room = screen.width.saturating_sub(used + 2 + TREND);
+        let mut room = screen.width.saturating_sub(used + 1 + TREND);
         let mut chosen = Vec::new();
-        for column in by_life {
+        for column in order {
             let width = self.width(table, column) + 2;
             if width <= room {
                 room -= width;
                 chosen.push(column);
             }
         }
-        chosen
+        chosen.sort_unstable();
+        let curve_of = liveliest.filter(|column| chosen.contains(column));
+        (chosen, curve_of)
     }
 
     fn width(&self, table: &TableView<'_>, column: usize) -> usize {
@@ -173,29 +174,28 @@ impl Items {
         curve_of: Option<usize>,
     ) -> Section {
         let shown: Vec<usize> = keys.iter().chain(chosen).copied().collect();
-        let row_of = |cell: &dyn Fn(usize) -> String| {
+        // A curve stands behind the column that it belongs to.
+        let row_of = |cell: &dyn Fn(usize) -> String, curve: &str| {
             let mut line = String::new();
             for &column in &shown {
                 let width = self.width(table, column);
                 let text = screen.cut(&cell(column), width);
-                line.push_str(&format!("  {text:>width$}"));
-            }
-            line
-        };
-        let names = row_of(&|column| harmless(&table.columns()[column].column.name));
-        let units = row_of(&|column| format::unit(&table.columns()[column].column.unit));
-        let curve_name = curve_of.map_or(String::new(), |column| {
-            harmless(&table.columns()[column].column.name)
-        });
-        let lines = self.rows.iter().map(|rows| {
-            let last = rows.last().copied().unwrap_or(0);
-            let cells = row_of(&|column| {
-                let kind = table.columns()[column].column.kind;
-                match self.columns[&column].value(last) {
-                    Value::Null => "null".to_string(),
-                    value => format::value(&value, kind),
+                if matches!(self.columns[&column], ColumnValues::Text(_)) {
+                    line.push_str(&format!("  {text:<width$}"));
+                } else {
+                    line.push_str(&format!("  {text:>width$}"));
                 }
-            });
+                if curve_of == Some(column) {
+                    line.push_str(&format!(" {curve:<TREND$}"));
+                }
+            }
+            line.trim_end().to_string()
+        };
+        let described = |column: usize| &table.columns()[column].column;
+        let names = row_of(&|column| harmless(&described(column).name), "");
+        let units = row_of(&|column| format::unit(&described(column).unit), "");
+        let line_of = |rows: &Vec<usize>| {
+            let last = rows.last().copied().unwrap_or(0);
             let curve = curve_of.map_or(String::new(), |column| {
                 let values = &self.columns[&column];
                 trend::curve(
@@ -204,34 +204,33 @@ impl Items {
                     screen.is_ascii,
                 )
             });
-            let age = table
-                .step(self.first_row + last)
-                .filter(|&step| Some(step) != self.latest_step(table));
-            let age = age.map_or(String::new(), |step| format!("  (step {step})"));
-            format!("{cells}  {curve}{age}").trim_end().to_string()
-        });
-        let mut lines: Vec<String> = lines.collect();
+            let cell = |column: usize| match self.columns[&column].value(last) {
+                Value::Null => "null".to_string(),
+                value => format::value(&value, described(column).kind),
+            };
+            let step = table.step(self.first_row + last);
+            let is_old = step != table.step(table.rows() - 1);
+            let age = step
+                .filter(|_| is_old)
+                .map_or(String::new(), |step| format!("  (step {step})"));
+            screen.cut(&format!("{}{age}", row_of(&cell, &curve)), screen.width)
+        };
+        let mut lines: Vec<String> = self.rows.iter().map(line_of).collect();
         if self.has_more {
             lines.push(format!(
                 "  and more; export --table {} has them all",
                 table.name()
             ));
         }
-        let title = screen.cut(&harmless(table.name()), screen.width);
-        let mut legend = vec![
-            screen.faint(&screen.cut(format!("{names}  {curve_name}").trim_end(), screen.width)),
-        ];
-        if !units.trim().is_empty() {
-            legend.push(screen.faint(units.trim_end()));
+        let mut legend = vec![screen.faint(&names)];
+        if !units.is_empty() {
+            legend.push(screen.faint(&units));
         }
+        let title = screen.bold(&screen.cut(&harmless(table.name()), screen.width));
         Section {
-            title: screen.bold(&title),
+            title,
             legend,
             lines,
         }
-    }
-
-    fn latest_step(&self, table: &TableView<'_>) -> Option<u64> {
-        table.step(table.rows() - 1)
     }
 }

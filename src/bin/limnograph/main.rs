@@ -76,7 +76,7 @@ struct Sight {
 ///
 /// CSV as RFC 4180 has it, one line a row, the first with names and units: `time [Gyr]`; a pure number has its
 /// name alone. A vector takes a cell for each of its values: `name.0`, `name.1`, … Numbers are the shortest that
-/// read back to the same bits; null is an empty cell, an empty text is \"\", a NaN is nan, infinities are inf
+/// read back to the same bits; null is an empty cell, an empty text is "", a NaN is nan, infinities are inf
 /// and -inf. Rows that a later leg did over again are left out, unless --all-legs is given.
 #[derive(Args)]
 #[command(after_help = "\

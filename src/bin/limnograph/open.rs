@@ -1,9 +1,10 @@
 //! Opening a series for a person, and what is said when that fails.
 
-use limnograph::reader::{ReadError, SeriesReader};
+use limnograph::reader::{Obstacle, ReadError, SeriesReader};
+use limnograph::series::layout::EXTENSION;
 use std::fmt;
 use std::io;
-use std::path::Path;
+use std::path::{Path, PathBuf};
 use std::time::Duration;
 
 /// Why a command has nothing to show.
@@ -29,6 +30,40 @@ impl From<io::Error> for Failure {
     }
 }
 
+/// Says what was probably meant when there is no series at `path`.
+fn explain(path: &Path, error: &ReadError) -> Failure {
+    let shown = path.display();
+    let mut text = match error.obstacle {
+        Obstacle::NotFound => {
+            format!("there is no {shown}; give the path of a series, a directory NAME.limno")
+        }
+        Obstacle::NotASeries => error.to_string(),
+        _ => return Failure::Told(error.to_string()),
+    };
+    if let Some(found) = nearby(path) {
+        text.push_str(&format!("\n  there is a series {}", found.display()));
+    }
+    Failure::Told(text)
+}
+
+/// A series of the same name with the ending that was left out, or one in the directory that was given.
+fn nearby(path: &Path) -> Option<PathBuf> {
+    let longer = PathBuf::from(format!(
+        "{}.{EXTENSION}",
+        path.to_string_lossy().trim_end_matches('/')
+    ));
+    if longer.is_dir() {
+        return Some(longer);
+    }
+    let entries = std::fs::read_dir(path)
+        .ok()?
+        .filter_map(Result::ok)
+        .map(|entry| entry.path());
+    entries
+        .filter(|path| path.extension().is_some_and(|ending| ending == EXTENSION) && path.is_dir())
+        .min()
+}
+
 impl From<ReadError> for Failure {
     fn from(error: ReadError) -> Failure {
         Failure::Told(error.to_string())
@@ -42,7 +77,7 @@ const PAUSE: Duration = Duration::from_millis(40);
 /// Opens a series. While a host writes, the end of its journal may be incomplete for a moment; a second look
 /// tells that from damage.
 pub fn settled(path: &Path) -> Result<SeriesReader, Failure> {
-    let mut reader = SeriesReader::open(path)?;
+    let mut reader = SeriesReader::open(path).map_err(|error| explain(path, &error))?;
     for _ in 0..LOOKS {
         let may_be_running = reader.legs().last().is_some_and(|leg| leg.end.is_none());
         if !may_be_running || reader.damage().is_empty() {

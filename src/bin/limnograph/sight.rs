@@ -183,8 +183,8 @@ fn cost(run: &TableView<'_>) -> Option<String> {
         return None;
     }
     Some(format!(
-        "the library takes {} % of the host's time: {} of {} a row",
-        format::number(100.0 * spent / total),
+        "the library takes {} of the host's time: {} of {} a row",
+        format::percent(spent / total),
         format::seconds(spent / f64::from(steps)),
         format::seconds(total / f64::from(steps))
     ))
