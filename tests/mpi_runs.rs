@@ -92,17 +92,12 @@ fn run(promise: &Promise, ranks: u32) -> Result<(), String> {
     let place = tempfile::tempdir().map_err(|error| error.to_string())?;
     let program = std::env::current_exe().map_err(|error| error.to_string())?;
     let output = Command::new("timeout")
-        .args([
-            "--kill-after=5",
-            LIMIT_SECONDS,
-            "mpirun",
-            "-n",
-            &ranks.to_string(),
-        ])
+        .args(["--kill-after=5", LIMIT_SECONDS])
+        .arg(concat!(env!("CARGO_MANIFEST_DIR"), "/scripts/mpirun.sh"))
+        .arg(ranks.to_string())
         .arg(program)
         .args([AS_RANK, promise.name])
         .arg(place.path())
-        .envs(promises::ENVIRONMENT.iter().copied())
         .output()
         .map_err(|error| format!("cannot start mpirun: {error}"))?;
     let text = format!(

@@ -106,13 +106,15 @@ proptest! {
     }
 
     #[test]
-    fn wide_sums_carry_like_long_integers(a in any::<[u128; 2]>(), b in any::<[u128; 2]>()) {
-        let cells = |n: [u128; 2]| [n[0] as u64, (n[0] >> 64) as u64, n[1] as u64, (n[1] >> 64) as u64];
-        let (low, carry) = a[0].overflowing_add(b[0]);
-        let high = a[1].wrapping_add(b[1]).wrapping_add(u128::from(carry));
-        let mut sum = cells(a);
-        add_with_carry(&mut sum, &cells(b));
-        prop_assert_eq!(sum, cells([low, high]));
+    fn wide_sums_carry_like_long_integers(
+        a in prop::array::uniform4(cell()), b in prop::array::uniform4(cell())
+    ) {
+        let long = |n: [u64; 4], at: usize| u128::from(n[at]) | u128::from(n[at + 1]) << 64;
+        let (low, carry) = long(a, 0).overflowing_add(long(b, 0));
+        let high = long(a, 2).wrapping_add(long(b, 2)).wrapping_add(u128::from(carry));
+        let mut sum = a;
+        add_with_carry(&mut sum, &b);
+        prop_assert_eq!((long(sum, 0), long(sum, 2)), (low, high));
     }
 
     #[test]

@@ -265,7 +265,6 @@ pub(super) fn read(
     section: &mut Section,
     expansion: &Expansion,
     units: Option<&Units>,
-    h: Option<f64>,
 ) -> Option<Clockwork> {
     const CLOCKS: [(&str, Coordinate); 3] = [
         ("a", Coordinate::ScaleFactor),
@@ -299,8 +298,8 @@ pub(super) fn read(
         }
     }
     let default_seconds = units.map_or(1.0, |units| units.factor(Quantity::Time, 1.0));
-    let unit_seconds = unit_of_time(section, "unit", coordinate, h).unwrap_or(default_seconds);
-    let birth_unit_seconds = unit_of_time(section, "birth_unit", birth, h).unwrap_or(unit_seconds);
+    let unit_seconds = unit_of_time(section, "unit", coordinate).unwrap_or(default_seconds);
+    let birth_unit_seconds = unit_of_time(section, "birth_unit", birth).unwrap_or(unit_seconds);
     if section.has_problems() {
         return None;
     }
@@ -316,19 +315,13 @@ pub(super) fn read(
 }
 
 /// A unit of time under `key` [s], which only makes sense where the coordinate is a time.
-fn unit_of_time(
-    section: &mut Section,
-    key: &str,
-    coordinate: Option<Coordinate>,
-    h: Option<f64>,
-) -> Option<f64> {
-    let unit = section.unit(key, Dimension::TIME).optional()?;
-    if coordinate.is_some_and(|coordinate| coordinate != Coordinate::Time) {
+fn unit_of_time(section: &mut Section, key: &str, coordinate: Option<Coordinate>) -> Option<f64> {
+    let seconds = section.constant(key, Dimension::TIME).optional();
+    if section.has(key) && coordinate.is_some_and(|coordinate| coordinate != Coordinate::Time) {
         section.refuse(
             key,
             "has no meaning unless the coordinate is \"t\"; leave it out",
         );
-        return None;
     }
-    super::fixed_value(section, key, &unit, h)
+    seconds
 }

@@ -4,10 +4,13 @@
 
 mod cadence;
 mod clockwork;
+mod convert;
 mod node;
 mod problem;
+mod read_cosmology;
 mod read_units;
 mod section;
+mod statements;
 mod units;
 mod volume;
 
@@ -15,12 +18,15 @@ use std::sync::Arc;
 
 pub use cadence::{Cadence, Tick};
 pub use clockwork::{BirthStamp, BirthWindow, ClockError, Clockwork, Coordinate, Moment};
+pub use convert::Measure;
 pub use problem::{Place, Problem};
-pub use section::{Answer, Measure, Section};
+pub use section::{Answer, Section};
 pub use units::{Positions, Quantity, Units};
 pub use volume::Volume;
 
-use crate::units::{Cosmology, Expansion, Parameters, Symbols, Unit, raise};
+use convert::Setting;
+
+use crate::units::{Expansion, Symbols};
 
 /// A config that has been read and found right, but for the gauges, which read their own sections.
 #[derive(Clone, Debug)]
@@ -111,7 +117,7 @@ impl Config {
             String::new(),
             start,
             entries,
-            Symbols::default(),
+            Setting::default(),
         );
         let config = read(&mut root, text);
         let problems = root.finish().err().unwrap_or_default();
@@ -122,78 +128,84 @@ impl Config {
         }
     }
 
+    /// Reads a config as it lies on disk; see [`Config::parse`].
+    ///
+    /// # Errors
+    /// As for [`Config::parse`]; and where the bytes are no UTF-8.
+    pub fn parse_bytes(bytes: &[u8], file: &str) -> Result<Config, Vec<Problem>> {
+        match std::str::from_utf8(bytes) {
+            Ok(text) => Config::parse(text, file),
+            Err(error) => {
+                let before = &bytes[..error.valid_up_to()];
+                let line = 1 + before.iter().filter(|byte| **byte == b'\n').count();
+                let message =
+                    "found bytes that are no UTF-8 text; save the file as UTF-8".to_string();
+                Err(vec![Problem {
+                    file: Arc::from(file),
+                    line,
+                    column: 1,
+                    message,
+                }])
+            }
+        }
+    }
+
     /// The stated volume or that of the box [comoving Mpc³]; `None` where there is none.
     pub fn comoving_volume_mpc3(&self) -> Option<f64> {
         self.volume.comoving_volume_mpc3()
-    }
-
-    /// What the config comes to, in plain words, one statement a line: for people to check.
-    pub fn statements(&self) -> Vec<String> {
-        self.units.statements()
     }
 }
 
 /// Reads every section, so that all problems come to light; `None` where one has any.
 fn read(root: &mut Section, text: &str) -> Option<Config> {
-    let file = root.file();
     set_solar_mass(root);
-    let cosmology = within(root, "cosmology", true, read_cosmology).flatten();
-    // With a cosmology that is wrong the rest is still read, for its own problems.
-    let (expansion, h) = cosmology.clone().unwrap_or((Expansion::Static, Some(0.7)));
-    let is_expanding = cosmology.is_none() || expansion != Expansion::Static;
-    let setting = read_units::Setting { is_expanding, h };
+    let expansion = read_cosmology::read(root);
+    // Where the cosmology is wrong the rest is read with some other, for its own problems.
+    let assumed = match &expansion {
+        Some(expansion) => expansion.clone(),
+        None => read_cosmology::any()?,
+    };
     let units = within(root, "units", true, |section| {
         // Its value has been put to use before, in `set_solar_mass`; here its problems are noted.
         let _ = solar_mass(section);
-        read_units::read(section, setting)
+        read_units::read(section)
     })
     .flatten();
-    let assumed = if cosmology.is_some() {
-        expansion.clone()
-    } else {
-        any_expansion()?
-    };
     let clockwork = within(root, "time", true, |section| {
-        clockwork::read(section, &assumed, units.as_ref(), h)
+        clockwork::read(section, &assumed, units.as_ref())
     })
     .flatten();
     let volume = within(root, "volume", true, |section| {
-        volume::read(section, units.as_ref(), h)
+        volume::read(section, units.as_ref())
     })
     .flatten();
-    let imf = within(root, "imf", false, read_imf).flatten();
     let cadence = within(root, "cadence", false, |section| {
         cadence::read(section, &assumed)
-    })
-    .unwrap_or_default();
-    let elements =
-        within(root, "elements", false, |section| names(section, &[])).unwrap_or_default();
-    let channels =
-        within(root, "channels", false, |section| names(section, &CHANNELS)).unwrap_or_default();
-    let threads = within(root, "threads", false, |section| {
+    });
+    let elements = within(root, "elements", false, |section| names(section, &[]));
+    let channels = within(root, "channels", false, |section| names(section, &CHANNELS));
+    let sweep_threads = within(root, "threads", false, |section| {
         section.integer("sweep", 1..=1024).or(1)
-    })
-    .unwrap_or(1);
+    });
     let description = within(root, "series", false, |section| {
-        section.text("description").or(String::new())
+        section.text("description").optional()
     })
-    .unwrap_or_default();
-    let gauges = read_gauges(root);
+    .flatten();
     Some(Config {
-        file,
+        file: root.file(),
         text: text.to_string(),
         checksum: crc32c::crc32c(text.as_bytes()),
-        description,
+        imf: within(root, "imf", false, read_imf).flatten(),
+        gauges: read_gauges(root),
+        description: description.unwrap_or_default(),
+        cadence: cadence.unwrap_or_default(),
+        elements: elements.unwrap_or_default(),
+        channels: channels.unwrap_or_default(),
+        sweep_threads: sweep_threads.unwrap_or(1) as usize,
         units: units?,
-        expansion: cosmology.map(|_| expansion)?,
+        expansion: expansion?,
         clockwork: clockwork?,
         volume: volume?,
-        imf,
-        cadence,
-        elements,
-        channels,
-        sweep_threads: threads as usize,
-        gauges,
     })
 }
 
@@ -223,7 +235,11 @@ fn set_solar_mass(root: &mut Section) {
         return;
     };
     if let Some(solar_mass_g) = solar_mass(&mut units) {
-        root.set_symbols(Symbols { solar_mass_g });
+        let symbols = Symbols { solar_mass_g };
+        root.set_setting(Setting {
+            symbols,
+            ..root.setting()
+        });
     }
 }
 
@@ -232,83 +248,6 @@ fn solar_mass(units: &mut Section) -> Option<f64> {
     units
         .number_in("solar_mass_in_grams", 1.97e33..=2.01e33)
         .optional()
-}
-
-fn read_cosmology(section: &mut Section) -> Option<(Expansion, Option<f64>)> {
-    let is_expanding = section.flag("expanding").or(true);
-    let hubble = section.number("hubble");
-    let hubble = if is_expanding {
-        hubble.required()
-    } else {
-        hubble.optional()
-    };
-    let omega_matter = section.number("omega_matter");
-    let omega_matter = if is_expanding {
-        omega_matter.required()
-    } else {
-        omega_matter.optional()
-    };
-    let omega_lambda = section.number("omega_lambda");
-    let omega_lambda = if is_expanding {
-        omega_lambda.required()
-    } else {
-        omega_lambda.optional()
-    };
-    let omega_radiation = section.number("omega_radiation").or(0.0);
-    let w = section.number("w").or(-1.0);
-    if !is_expanding {
-        for key in ["omega_matter", "omega_lambda", "omega_radiation", "w"] {
-            if section.has(key) {
-                section.refuse(
-                    key,
-                    "has no meaning beside expanding = false; leave one of them out",
-                );
-            }
-        }
-        if let Some(hubble) = hubble.filter(|hubble| !(1.0..=1000.0).contains(hubble)) {
-            section.refuse(
-                "hubble",
-                format!("found {hubble}; expected the Hubble constant in km/s/Mpc, such as 70"),
-            );
-        }
-        return (!section.has_problems())
-            .then_some((Expansion::Static, hubble.map(|hubble| hubble / 100.0)));
-    }
-    let h = hubble? / 100.0;
-    let parameters = Parameters {
-        h,
-        omega_matter: omega_matter?,
-        omega_lambda: omega_lambda?,
-        omega_radiation,
-        w,
-    };
-    match Cosmology::new(parameters) {
-        Ok(cosmology) if !section.has_problems() => {
-            Some((Expansion::Expanding(cosmology), Some(h)))
-        }
-        Ok(_) => None,
-        Err(error) => {
-            let key = if error.parameter.is_empty() {
-                "omega_matter"
-            } else {
-                error.parameter
-            };
-            section.refuse(key, error.message);
-            None
-        }
-    }
-}
-
-/// Stands in for a cosmology that could not be read, so that the rest of the config can be.
-fn any_expansion() -> Option<Expansion> {
-    let parameters = Parameters {
-        h: 0.7,
-        omega_matter: 0.3,
-        omega_lambda: 0.7,
-        omega_radiation: 0.0,
-        w: -1.0,
-    };
-    Cosmology::new(parameters).ok().map(Expansion::Expanding)
 }
 
 fn read_imf(section: &mut Section) -> Option<Imf> {
@@ -384,31 +323,4 @@ fn read_gauges(root: &mut Section) -> Vec<(String, Section)> {
     .unwrap_or_default();
     gauges.sort_by(|(left, _), (right, _)| left.cmp(right));
     gauges
-}
-
-/// A value in cgs that does not change with time; `None` where a problem was recorded.
-fn fixed_value(section: &mut Section, key: &str, unit: &Unit, h: Option<f64>) -> Option<f64> {
-    if unit.a_power != 0.0 {
-        section.refuse(
-            key,
-            "found the scale factor in its unit; expected a value that does not change with time",
-        );
-        return None;
-    }
-    if unit.h_power != 0.0 && h.is_none() {
-        section.refuse(
-            key,
-            "found h; expected hubble under [cosmology], which says what h is",
-        );
-        return None;
-    }
-    let value = unit.factor_cgs * raise(h.unwrap_or(1.0), unit.h_power);
-    if !value.is_normal() {
-        section.refuse(
-            key,
-            format!("comes to {value:e} in cgs; expected a number in double precision"),
-        );
-        return None;
-    }
-    Some(value)
 }

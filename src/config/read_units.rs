@@ -1,17 +1,9 @@
 //! Reads `[units]`: which unit, which powers of a and h, and no way of saying the same thing twice.
 
+use super::convert::Setting;
 use super::section::Section;
 use super::units::{Positions, Quantity, Scale, Units};
 use crate::units::{Dimension, Unit, UnitError, raise};
-
-/// What the rest of the config has to say about units.
-#[derive(Clone, Copy)]
-pub(super) struct Setting {
-    /// Is there a scale factor?
-    pub(super) is_expanding: bool,
-    /// The Hubble parameter, where one is known.
-    pub(super) h: Option<f64>,
-}
 
 /// Quantity = value · unit · a^a · h^h.
 #[derive(Clone, Copy)]
@@ -32,7 +24,8 @@ impl Form {
 const LARGEST_POWER: f64 = 10.0;
 
 /// Reads the section; `None` where it recorded a problem.
-pub(super) fn read(section: &mut Section, setting: Setting) -> Option<Units> {
+pub(super) fn read(section: &mut Section) -> Option<Units> {
+    let setting = section.setting();
     let mut reader = Reader {
         section,
         setting,

@@ -4,10 +4,11 @@
 use std::ops::RangeInclusive;
 use std::sync::Arc;
 
+use super::convert::{Measure, Setting, constant, each, flag, list, measure, number, text, unit};
 use super::node::{Entry, Node, Value};
-use super::problem::{Place, Problem, plain, quoted};
+use super::problem::{Place, Problem, plain};
 use crate::units::nearest::{either, nearest};
-use crate::units::{Dimension, Symbols, Unit};
+use crate::units::{Dimension, Unit};
 
 /// One table of the config, with the problems found in it so far.
 ///
@@ -27,16 +28,7 @@ pub struct Section {
     entries: Vec<Entry>,
     asked: Vec<String>,
     problems: Vec<Problem>,
-    symbols: Symbols,
-}
-
-/// A quantity as the config states it.
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub enum Measure {
-    /// A bare number: so many of the host's own unit.
-    Host(f64),
-    /// A number with its unit, or a unit alone.
-    Stated(Unit),
+    setting: Setting,
 }
 
 /// What was found under a key; say what its absence means to get at it.
@@ -93,7 +85,7 @@ impl Section {
         path: String,
         place: Place,
         entries: Vec<Entry>,
-        symbols: Symbols,
+        setting: Setting,
     ) -> Section {
         Section {
             file,
@@ -102,7 +94,7 @@ impl Section {
             entries,
             asked: Vec::new(),
             problems: Vec::new(),
-            symbols,
+            setting,
         }
     }
 
@@ -110,8 +102,13 @@ impl Section {
         self.file.clone()
     }
 
-    pub(super) fn set_symbols(&mut self, symbols: Symbols) {
-        self.symbols = symbols;
+    pub(super) fn setting(&self) -> Setting {
+        self.setting
+    }
+
+    /// What units may rely on from here on, in this table and those below.
+    pub(super) fn set_setting(&mut self, setting: Setting) {
+        self.setting = setting;
     }
 
     /// Its name as the file has it, e.g. `gauges.wind_shells`; empty for the file as a whole.
@@ -278,26 +275,34 @@ impl Section {
     }
 
     /// A unit of the given dimension: its name, or a bare number that is its value in cgs.
-    pub fn unit<'s>(&'s mut self, key: &'s str, dimension: Dimension) -> Answer<'s, Unit> {
-        let expected = format!("the unit of {dimension}, as a name in quotes or its value in cgs");
-        self.answer_or_why(key, expected, |node, symbols| match number(node) {
-            Some(value) => Unit::from_cgs(value, dimension)
-                .map_err(|error| format!("{}, which {error}", plain(value))),
-            None => unit(node, dimension, symbols),
+    pub(super) fn unit<'s>(&'s mut self, key: &'s str, dimension: Dimension) -> Answer<'s, Unit> {
+        let expected =
+            format!("the unit of {dimension}, as a text or a number that is its value in cgs");
+        self.answer_or_why(key, expected, |node, setting| {
+            unit(node, dimension, setting)
+        })
+    }
+
+    /// A quantity that does not change with time, in cgs: a text with its unit (`"0.1 m_p cm^-3"`), or a bare
+    /// number in cgs.
+    pub fn constant<'s>(&'s mut self, key: &'s str, dimension: Dimension) -> Answer<'s, f64> {
+        let expected = format!("{dimension}, as a text with its unit or a number in cgs");
+        self.answer_or_why(key, expected, |node, setting| {
+            constant(node, dimension, setting)
         })
     }
 
     /// The unit written under `key` where it can be read at all, without asking for the key.
     pub(super) fn unit_if_right(&self, key: &str) -> Option<Unit> {
-        Unit::parse(text(&self.look(key)?.node)?, &self.symbols).ok()
+        Unit::parse(text(&self.look(key)?.node)?, &self.setting.symbols).ok()
     }
 
     /// A quantity of the given dimension: a bare number counts in the host's own unit, a text states its
     /// unit (`"30 kpc"`).
     pub fn measure<'s>(&'s mut self, key: &'s str, dimension: Dimension) -> Answer<'s, Measure> {
-        let expected = measure_expected(dimension);
-        self.answer_or_why(key, expected, |node, symbols| {
-            measure(node, dimension, symbols)
+        let expected = host_or_stated(dimension);
+        self.answer_or_why(key, expected, |node, setting| {
+            measure(node, dimension, setting)
         })
     }
 
@@ -307,26 +312,26 @@ impl Section {
         key: &'s str,
         dimension: Dimension,
     ) -> Answer<'s, Vec<Measure>> {
-        let expected = format!("a list, each of it {}", measure_expected(dimension));
-        self.answer_or_why(key, expected, |node, symbols| {
+        let expected = format!("a list, each of it {}", host_or_stated(dimension));
+        self.answer_or_why(key, expected, |node, setting| {
             let items = list(node).ok_or_else(|| node.value.describe())?;
             items
                 .iter()
-                .map(|item| measure(item, dimension, symbols))
+                .map(|item| measure(item, dimension, setting))
                 .collect()
         })
     }
 
     /// A table of its own. Finish it too, and hand its problems to [`Section::adopt`].
     pub fn section<'s>(&'s mut self, key: &'s str) -> Answer<'s, Section> {
-        let (file, path, symbols) = (self.file.clone(), self.below(key), self.symbols);
+        let (file, path, setting) = (self.file.clone(), self.below(key), self.setting);
         self.answer(key, "a table".to_string(), |node, _| match &node.value {
             Value::Table(entries) => Some(Section::new(
                 file,
                 path,
                 node.place,
                 entries.clone(),
-                symbols,
+                setting,
             )),
             _ => None,
         })
@@ -334,7 +339,7 @@ impl Section {
 
     /// A list of tables, `[[name]]` in the file; each is finished as for [`Section::section`].
     pub fn sections<'s>(&'s mut self, key: &'s str) -> Answer<'s, Vec<Section>> {
-        let (file, path, symbols) = (self.file.clone(), self.below(key), self.symbols);
+        let (file, path, setting) = (self.file.clone(), self.below(key), self.setting);
         self.answer(
             key,
             format!("a list of tables, each under [[{path}]]"),
@@ -347,7 +352,7 @@ impl Section {
                             path.clone(),
                             item.place,
                             entries.clone(),
-                            symbols,
+                            setting,
                         )),
                         _ => None,
                     })
@@ -374,7 +379,7 @@ impl Section {
             self.below(key),
             entry.place,
             Vec::new(),
-            self.symbols,
+            self.setting,
         ))
     }
 
@@ -448,10 +453,10 @@ impl Section {
         &'s mut self,
         key: &'s str,
         expected: String,
-        convert: impl FnOnce(&Node, &Symbols) -> Option<T>,
+        convert: impl FnOnce(&Node, &Setting) -> Option<T>,
     ) -> Answer<'s, T> {
-        self.answer_or_why(key, expected, |node, symbols| {
-            convert(node, symbols).ok_or_else(|| node.value.describe())
+        self.answer_or_why(key, expected, |node, setting| {
+            convert(node, setting).ok_or_else(|| node.value.describe())
         })
     }
 
@@ -460,7 +465,7 @@ impl Section {
         &'s mut self,
         key: &'s str,
         expected: String,
-        convert: impl FnOnce(&Node, &Symbols) -> Result<T, String>,
+        convert: impl FnOnce(&Node, &Setting) -> Result<T, String>,
     ) -> Answer<'s, T> {
         if !self.asked.iter().any(|asked| asked == key) {
             self.asked.push(key.to_string());
@@ -474,7 +479,7 @@ impl Section {
                     found: Found::Absent,
                 };
             }
-            Some(entry) => convert(&entry.node, &self.symbols),
+            Some(entry) => convert(&entry.node, &self.setting),
         };
         let found = match converted {
             Ok(value) => Found::Good(value),
@@ -539,70 +544,8 @@ fn unknown(what: &str, name: &str, known: &[&str], quote: impl Fn(&str) -> Strin
     format!("unknown {what} {shown}; known here: {}", known.join(", "))
 }
 
-fn number(node: &Node) -> Option<f64> {
-    match node.value {
-        Value::Float(value) => Some(value),
-        Value::Integer(value) => Some(value as f64),
-        _ => None,
-    }
-}
-
-fn text(node: &Node) -> Option<&str> {
-    match &node.value {
-        Value::Text(text) => Some(text),
-        _ => None,
-    }
-}
-
-fn list(node: &Node) -> Option<&[Node]> {
-    match &node.value {
-        Value::List(items) => Some(items),
-        _ => None,
-    }
-}
-
-fn flag(node: &Node) -> Option<bool> {
-    match node.value {
-        Value::Flag(flag) => Some(flag),
-        _ => None,
-    }
-}
-
-/// Every item of a list; or what was found that is not as expected.
-fn each<T>(node: &Node, convert: impl Fn(&Node) -> Option<T>) -> Result<Vec<T>, String> {
-    let items = list(node).ok_or_else(|| node.value.describe())?;
-    items
-        .iter()
-        .map(|item| convert(item).ok_or_else(|| format!("{} in the list", item.value.describe())))
-        .collect()
-}
-
-fn unit(node: &Node, dimension: Dimension, symbols: &Symbols) -> Result<Unit, String> {
-    let written = text(node).ok_or_else(|| node.value.describe())?;
-    let unit =
-        Unit::parse(written, symbols).map_err(|error| format!("{} ({error})", quoted(written)))?;
-    if unit.dimension == dimension {
-        Ok(unit)
-    } else if unit.dimension == Dimension::NUMBER {
-        Err(format!(
-            "{}, a pure number (a bare number is written without quotes)",
-            quoted(written)
-        ))
-    } else {
-        Err(format!("{}, {}", quoted(written), unit.dimension))
-    }
-}
-
-fn measure(node: &Node, dimension: Dimension, symbols: &Symbols) -> Result<Measure, String> {
-    match number(node) {
-        Some(value) if value > 0.0 => Ok(Measure::Host(value)),
-        Some(value) => Err(plain(value)),
-        None => unit(node, dimension, symbols).map(Measure::Stated),
-    }
-}
-
-fn measure_expected(dimension: Dimension) -> String {
+fn host_or_stated(dimension: Dimension) -> String {
     format!(
-        "{dimension}: a number greater than 0 in the host's own unit, or a text with number and unit"
+        "{dimension}, as a number greater than 0 in the host's own unit or a text with its unit"
     )
 }

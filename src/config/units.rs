@@ -146,6 +146,11 @@ impl Units {
         self.scale(quantity).is_stated
     }
 
+    /// Whether there is a scale factor at all.
+    pub fn is_expanding(&self) -> bool {
+        self.scale(Quantity::Length).a_power != self.scale(Quantity::ComovingLength).a_power
+    }
+
     /// Whether coordinates are comoving.
     pub fn positions(&self) -> Positions {
         self.positions

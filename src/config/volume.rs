@@ -1,9 +1,10 @@
 //! The region that is simulated: its edges, its periodicity and the comoving volume rates are divided by.
 
-use super::section::{Measure, Section};
+use super::convert::Measure;
+use super::section::Section;
 use super::units::{Positions, Quantity, Units};
+use crate::units::Dimension;
 use crate::units::constants::MEGAPARSEC;
-use crate::units::{Dimension, Unit};
 
 /// The simulated region.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -39,78 +40,98 @@ impl Volume {
 }
 
 /// Reads `[volume]`; `None` where it recorded a problem. `units` is `None` where they have problems.
-pub(super) fn read(section: &mut Section, units: Option<&Units>, h: Option<f64>) -> Option<Volume> {
-    let stated_none = section.flag("none").or(false);
-    let comoving_volume = section
-        .unit("comoving_volume", Dimension::VOLUME)
-        .optional();
-    let stated_volume =
-        comoving_volume.and_then(|unit| comoving(section, "comoving_volume", unit, 3.0, h));
+pub(super) fn read(section: &mut Section, units: Option<&Units>) -> Option<Volume> {
+    let is_none = section.flag("none").or(false);
     let edges = edges(section);
     let periodic = periodic(section, edges.is_some());
-    if section.is_number("comoving_volume") {
-        section.refuse(
-            "comoving_volume",
-            "found a bare number; expected a volume with its unit, as in \"1e6 Mpc^3\"",
-        );
-    }
-    let has_value = section.has("box") || section.has("comoving_volume");
-    if stated_none && has_value {
+    // One host unit of length at a = 1, where comoving and physical are the same.
+    let host_cm = units.map_or(1.0, |units| units.factor(Quantity::ComovingLength, 1.0));
+    let edges_cm = edges.and_then(|edges| comoving(section, "box", 1.0, edges, host_cm));
+    let box_mpc3 =
+        edges_cm.map(|edges| edges.map(|edge| edge / MEGAPARSEC).iter().product::<f64>());
+    let stated_mpc3 = stated_volume(section);
+    let is_stated = section.has("box") || section.has("comoving_volume");
+    if is_none && is_stated {
         section.refuse(
             "none",
             "found true beside a box or a comoving_volume; leave one of them out",
         );
     }
-    if !stated_none && !has_value {
+    if !is_none && !is_stated {
         section.refuse(
             "box",
             "is missing; expected box, or comoving_volume, or none = true where there is no volume",
         );
     }
-    // The comoving length of one host unit of length, and one physical at a = 1 is the same.
-    let host_cm = units.map_or(1.0, |units| units.factor(Quantity::ComovingLength, 1.0));
-    let grows = units.is_some_and(|units| {
-        units.positions() == Positions::Physical
-            && units.scale_factor_power(Quantity::ComovingLength) != 0.0
-    });
-    let edges = edges.map(|edges| {
-        edges.map(|edge| match edge {
-            Measure::Host(value) => Some(value),
-            Measure::Stated(unit) => comoving(section, "box", unit, 1.0, h).map(|cm| cm / host_cm),
-        })
-    });
-    let edges = match edges {
-        Some([Some(x), Some(y), Some(z)]) => Some([x, y, z]),
-        _ => None,
-    };
-    let box_volume = edges.map(|edges| {
-        edges
-            .map(|edge| edge * (host_cm / MEGAPARSEC))
-            .iter()
-            .product::<f64>()
-    });
-    let comoving_mpc3 = stated_volume
-        .map(|cm3| cm3 / MEGAPARSEC / MEGAPARSEC / MEGAPARSEC)
-        .or(box_volume);
-    let out_of_range = |value: &f64| !(value.is_normal() && *value > 0.0);
-    if comoving_mpc3.as_ref().is_some_and(out_of_range) || edges.iter().flatten().any(out_of_range)
-    {
-        let key = if section.has("box") {
-            "box"
-        } else {
+    let comoving_mpc3 = stated_mpc3.or(box_mpc3);
+    if comoving_mpc3.is_some_and(|volume| !volume.is_normal()) {
+        let key = if stated_mpc3.is_some() {
             "comoving_volume"
+        } else {
+            "box"
         };
         section.refuse(
             key,
-            "comes to a volume that is no usable number in Mpc^3; check its unit",
+            "comes to a volume that double precision cannot hold in Mpc^3; check its unit",
         );
     }
+    let grows =
+        units.is_some_and(|units| units.is_expanding() && units.positions() == Positions::Physical);
+    let edges = edges.map(|edges| {
+        edges.map(|edge| match edge {
+            Measure::Host(value) => value,
+            Measure::Stated { cgs, .. } => cgs / host_cm,
+        })
+    });
     (!section.has_problems()).then_some(Volume {
         edges,
         grows,
         periodic,
         comoving_mpc3,
     })
+}
+
+/// `comoving_volume`, in Mpc³. A bare number would be in units nobody thinks in.
+fn stated_volume(section: &mut Section) -> Option<f64> {
+    let key = "comoving_volume";
+    let stated = section.measure(key, Dimension::VOLUME).optional()?;
+    if let Measure::Host(value) = stated {
+        section.refuse(
+            key,
+            format!("found {value} without a unit; expected a text with one, as in \"1e6 Mpc^3\""),
+        );
+        return None;
+    }
+    let [cm3] = comoving(section, key, 3.0, [stated], 1.0)?;
+    Some(cm3 / MEGAPARSEC / MEGAPARSEC / MEGAPARSEC)
+}
+
+/// Comoving quantities in cgs, of lengths to the given power. An `a` to that power in a unit says no more than
+/// that the quantity is comoving, which it is anyway.
+fn comoving<const N: usize>(
+    section: &mut Section,
+    key: &str,
+    power: f64,
+    measures: [Measure; N],
+    host: f64,
+) -> Option<[f64; N]> {
+    let mut cgs = [0.0; N];
+    for (to, measure) in cgs.iter_mut().zip(measures) {
+        *to = match measure {
+            Measure::Host(value) => value * host,
+            Measure::Stated { cgs, a_power } if a_power == 0.0 || a_power == power => cgs,
+            Measure::Stated { a_power, .. } => {
+                section.refuse(
+                    key,
+                    format!(
+                        "found the scale factor to the power {a_power}; expected {power}, or none"
+                    ),
+                );
+                return None;
+            }
+        };
+    }
+    Some(cgs)
 }
 
 /// One edge length for a cube, or three.
@@ -171,21 +192,4 @@ fn periodic(section: &mut Section, has_box: bool) -> [bool; 3] {
         );
     }
     periodic
-}
-
-/// A comoving length or volume in cgs; an `a` to the right power in its unit says no more than that.
-fn comoving(
-    section: &mut Section,
-    key: &str,
-    unit: Unit,
-    power: f64,
-    h: Option<f64>,
-) -> Option<f64> {
-    let is_marked = unit.a_power == power;
-    let unit = if is_marked {
-        unit.without_scale_factor()
-    } else {
-        unit
-    };
-    super::fixed_value(section, key, &unit, h)
 }

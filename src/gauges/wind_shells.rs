@@ -23,8 +23,8 @@ use crate::lend::{Field, Species};
 use crate::series::record::{Row, Value};
 use crate::series::schema::{Column, Kind, ValueType};
 use crate::sweep::{Block, Work};
+use crate::units::Dimension;
 use crate::units::constants::{KILOPARSEC, SOLAR_MASS, YEAR};
-use crate::units::{Cosmology, Dimension};
 
 const OUTWARD: usize = 0;
 const INWARD: usize = 1;
@@ -66,7 +66,7 @@ pub(super) fn build(section: &mut Section, config: &Config, plan: &mut Plan) -> 
         .choice("lengths", &frames)
         .required()
         .unwrap_or(Frame::Physical);
-    let edges = edges_in_cm(section, config);
+    let edges = edges_in_cm(section);
     let mut name = "station".to_string();
     let (mut position, mut velocity) = ([0.0; 3], [0.0; 3]);
     if let Some(mut station) = section.section("station").required() {
@@ -195,16 +195,11 @@ fn columns() -> Vec<Column> {
 }
 
 /// The edges in cm: listed, or spaced evenly in radius or in its logarithm.
-fn edges_in_cm(section: &mut Section, config: &Config) -> Vec<f64> {
-    let unit = section.unit("unit", Dimension::LENGTH).required();
-    if unit.is_some_and(|unit| unit.a_power != 0.0) {
-        section.refuse(
-            "unit",
-            "found a power of the scale factor; say `lengths = \"comoving\"` instead",
-        );
-    }
-    let h = config.expansion.cosmology().map_or(1.0, Cosmology::h);
-    let unit = unit.map_or(1.0, |unit| unit.to_cgs(h, 1.0));
+fn edges_in_cm(section: &mut Section) -> Vec<f64> {
+    let unit = section
+        .constant("unit", Dimension::LENGTH)
+        .required()
+        .unwrap_or(1.0);
     let edges = match (section.has("edges"), section.has("shells")) {
         (true, false) => section.numbers("edges").or(Vec::new()),
         (false, true) => {

@@ -153,6 +153,11 @@ impl Cosmology {
         self.parameters.h
     }
 
+    /// Curvature density Ωk at a = 1: what matter, dark energy and radiation leave to 1.
+    pub fn omega_curvature(&self) -> f64 {
+        self.omega_curvature
+    }
+
     /// Largest scale factor for which ages are known: 1000, or 2 for a universe that later stops expanding.
     pub fn largest_scale_factor(&self) -> f64 {
         self.largest

@@ -90,17 +90,6 @@ pub const PROMISES: &[Promise] = &[
     },
 ];
 
-/// For Open MPI 4 and 5 in small machines and containers; other libraries ignore them.
-pub const ENVIRONMENT: &[(&str, &str)] = &[
-    ("OMPI_ALLOW_RUN_AS_ROOT", "1"),
-    ("OMPI_ALLOW_RUN_AS_ROOT_CONFIRM", "1"),
-    ("OMPI_MCA_rmaps_base_oversubscribe", "1"),
-    ("OMPI_MCA_mpi_yield_when_idle", "1"),
-    ("OMPI_MCA_btl_vader_single_copy_mechanism", "none"),
-    ("OMPI_MCA_btl_base_warn_component_unused", "0"),
-    ("PRTE_MCA_rmaps_default_mapping_policy", ":oversubscribe"),
-];
-
 const LONG: Duration = Duration::from_secs(30);
 
 /// MPI as a host with one thread has it.

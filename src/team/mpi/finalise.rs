@@ -5,7 +5,7 @@
 
 use super::join;
 use crate::team::TeamError;
-use crate::team::float::FloatGuard;
+use crate::team::float::under_default_control;
 use mpi::ffi;
 use std::ffi::{c_int, c_void};
 use std::panic::catch_unwind;
@@ -97,8 +97,7 @@ unsafe extern "C" fn at_finalise(
         state.hook
     };
     if let Some(hook) = hook {
-        let _control = FloatGuard::enter();
-        let _ = catch_unwind(hook);
+        let _ = under_default_control(|| catch_unwind(hook));
     }
     ffi::MPI_SUCCESS as c_int
 }
