@@ -3,7 +3,7 @@
 use crate::format::{self, count};
 use crate::open::Failure;
 use crate::screen::harmless;
-use limnograph::reader::{Damage, DamageKind, LegSummary, Selection, SeriesReader};
+use limnograph::reader::{Damage, DamageKind, LegSummary, Selection, SeriesReader, extent};
 use limnograph::series::journal::Gap;
 use std::io::Write;
 
@@ -18,11 +18,7 @@ pub fn tell(reader: &SeriesReader, out: &mut dyn Write) -> Result<u8, Failure> {
     if damage.is_empty() {
         writeln!(out, "{path} is whole{gaps}")?;
     } else {
-        writeln!(
-            out,
-            "{path} is DAMAGED in {}{gaps}",
-            count(damage.len(), "place")
-        )?;
+        writeln!(out, "{path} is DAMAGED {}{gaps}", extent(&damage))?;
     }
     tell_legs(reader, out)?;
     tell_tables(reader, out)?;
@@ -49,8 +45,8 @@ fn tell_legs(reader: &SeriesReader, out: &mut dyn Write) -> Result<(), Failure> 
         if leg.superseded > 0 {
             writeln!(
                 out,
-                "     {} of them superseded: a later leg did them over again; kept, and left out unless asked for",
-                count(leg.superseded, "step")
+                "     {} of its steps superseded: a later leg did them over again; kept, and left out unless asked for",
+                leg.superseded
             )?;
         }
         match &leg.end {

@@ -59,7 +59,12 @@ fn section(run: &TableView<'_>, gauge: &str, reasons: &Reasons, screen: &Screen)
         ));
     }
     if let Some(first) = nulls.first() {
-        lines.push(layout.unmeasured_line(screen, first, unmeasured.len() - 1, reasons.of(gauge)));
+        lines.extend(unmeasured(
+            screen,
+            first,
+            nulls.len() - 1,
+            &reasons.of(gauge),
+        ));
     }
     Section {
         title: screen.bold(&screen.cut(gauge, screen.width)),
@@ -126,20 +131,32 @@ impl Layout {
     }
 }
 
-/// What was not measured, and why when that is known; on a second line when one is too short.
-fn unmeasured(screen: &Screen, first: &Column, others: usize, reason: Option<&str>) -> Vec<String> {
+/// What was not measured, and why when that is known; on lines of its own when one is too short.
+fn unmeasured(screen: &Screen, first: &Column, others: usize, reasons: &[&str]) -> Vec<String> {
     let others = if others > 0 {
         format!(" and {others} more")
     } else {
         String::new()
     };
-    let name = harmless(&first.name);
-    let reason = reason.map(harmless).unwrap_or_default();
-    let mut lines = vec![format!("  {name}{others}: not measured")];
-    if lines[0].chars().count() + 2 + reason.chars().count() <= screen.width && !reason.is_empty() {
-        lines[0].push_str(&format!(": {reason}"));
-    } else if !reason.is_empty() {
-        lines.push(format!("    {reason}"));
+    let mut lines = vec![format!("  {}{others}: not measured", harmless(&first.name))];
+    if screen.lines.is_none() {
+        lines.extend(
+            reasons
+                .iter()
+                .map(|reason| format!("    {}", harmless(reason))),
+        );
+    } else if !reasons.is_empty() {
+        // What stands before a semicolon is the cause; the rest explains.
+        let causes: Vec<&str> = reasons
+            .iter()
+            .map(|reason| reason.split("; ").next().unwrap_or(reason))
+            .collect();
+        let causes = harmless(&causes.join(", "));
+        if lines[0].chars().count() + 2 + causes.chars().count() <= screen.width {
+            lines[0].push_str(&format!(": {causes}"));
+        } else {
+            lines.push(format!("    {causes}"));
+        }
     }
     lines
         .iter()
@@ -176,12 +193,14 @@ impl Reasons {
         Reasons { notes }
     }
 
-    /// The last thing said about a gauge.
-    fn of(&self, gauge: &str) -> Option<&str> {
-        self.notes
-            .iter()
-            .rev()
-            .find(|(source, _)| source == gauge)
-            .map(|(_, text)| text.as_str())
+    /// What has been said about a gauge, each thing once.
+    fn of(&self, gauge: &str) -> Vec<&str> {
+        let mut texts: Vec<&str> = Vec::new();
+        for (source, text) in &self.notes {
+            if source == gauge && !texts.contains(&text.as_str()) {
+                texts.push(text);
+            }
+        }
+        texts
     }
 }

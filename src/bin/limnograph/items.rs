@@ -110,8 +110,28 @@ impl Items {
         total / self.rows.len().max(1) as f64
     }
 
-    /// As many columns as fit, and which of them gets a curve: first one that describes the items and hardly
-    /// changes, then the liveliest.
+    /// Does the column grow from item to item, as radii do from shell to shell? Items that differ in another
+    /// key than the last are not compared.
+    fn is_scale(&self, column: usize, keys: &[usize]) -> bool {
+        let latest = || self.rows.iter().filter_map(|rows| rows.last().copied());
+        let group = |row: usize| {
+            keys[..keys.len() - 1]
+                .iter()
+                .map(move |key| self.columns[key].value(row))
+        };
+        let mut pairs = latest()
+            .zip(latest().skip(1))
+            .filter(|&(one, next)| group(one).eq(group(next)))
+            .peekable();
+        let number = |row: usize| self.columns[&column].number(row);
+        pairs.peek().is_some()
+            && pairs.all(
+                |(one, next)| matches!((number(one), number(next)), (Some(a), Some(b)) if a < b),
+            )
+    }
+
+    /// As many columns as fit, and which of them gets a curve: first the one that tells how large the items are,
+    /// then the liveliest.
     fn choose(
         &self,
         columns: &[usize],
@@ -127,10 +147,14 @@ impl Items {
             .collect();
         ranked.sort_by_key(|&(life, column)| (std::cmp::Reverse(life), column));
         let liveliest = ranked.first().map(|&(_, column)| column);
-        let mut order: Vec<usize> = ranked.into_iter().map(|(_, column)| column).collect();
-        if let Some(calmest) = order.pop() {
-            order.insert(0, calmest);
-        }
+        let scale = columns
+            .iter()
+            .copied()
+            .find(|&column| self.is_scale(column, keys));
+        let ranked = ranked.into_iter().map(|(_, column)| column);
+        let order = scale
+            .into_iter()
+            .chain(ranked.filter(|&column| Some(column) != scale));
         let used: usize = keys.iter().map(|&key| self.width(table, key) + 2).sum();
         let mut room = screen.width.saturating_sub(used + 1 + TREND);
         let mut chosen = Vec::new();

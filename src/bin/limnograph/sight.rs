@@ -5,7 +5,7 @@ use crate::gauges::{self, Section};
 use crate::items;
 use crate::open::Failure;
 use crate::screen::{Screen, harmless};
-use limnograph::reader::{SeriesReader, TableView};
+use limnograph::reader::{SeriesReader, TableView, extent};
 use limnograph::series::now_milliseconds;
 use limnograph::series::record::Value;
 use limnograph::series::schema::Kind;
@@ -197,8 +197,8 @@ fn health(reader: &SeriesReader) -> Vec<String> {
     if !damage.is_empty() {
         let path = reader.path().display();
         lines.push(format!(
-            "damaged in {}: limnograph audit {path}",
-            format::count(damage.len(), "place")
+            "the series is damaged {}: limnograph audit {path}",
+            extent(&damage)
         ));
     }
     let missing: u64 = reader
