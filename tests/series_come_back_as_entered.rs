@@ -133,6 +133,23 @@ fn times_within_half_a_step_count_as_equal() {
 }
 
 #[test]
+fn a_leg_that_measured_nothing_supersedes_nothing() {
+    let room = tempfile::tempdir().expect("room");
+    let path = room.path().join("saltmarsh.limno");
+    write_leg(&path, 0..50);
+    let series = Series::open(&path, opening()).expect("opens");
+    // Only a note, from a host that failed before its first step.
+    let mut note = record(0);
+    note.rows.retain(|row| row.table == 2);
+    assert_eq!(note.rows.len(), 1);
+    enter(&series, note);
+    series.close(PATIENCE).expect("closes");
+    let reader = SeriesReader::open(&path).expect("opens");
+    assert_eq!(reader.table("run").map(|run| run.rows()), Some(50));
+    assert_eq!(reader.table("events").map(|events| events.rows()), Some(2));
+}
+
+#[test]
 fn columns_of_other_legs_are_null_where_they_were_not_measured() {
     let room = tempfile::tempdir().expect("room");
     let path = room.path().join("saltmarsh.limno");

@@ -150,7 +150,7 @@ pub fn limits(legs: &[LegData]) -> Vec<Option<Limit>> {
     let mut earliest: Option<Limit> = None;
     for (index, leg) in legs.iter().enumerate().rev() {
         limits[index] = earliest;
-        let Some(first) = leg.first().map(|mark| mark.preface) else {
+        let Some(first) = leg.first_measured().map(|mark| mark.preface) else {
             continue;
         };
         let tolerance = 0.5 * first.step_length.abs();

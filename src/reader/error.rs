@@ -69,7 +69,8 @@ pub enum DamageKind {
     Missing,
 }
 
-/// One damaged stretch.
+/// One damaged stretch. For [`DamageKind::Missing`] `file` names the leg, and `from` and `to` are numbers of
+/// records instead of bytes.
 #[derive(Clone, Debug, PartialEq, Eq)]
 pub struct Damage {
     /// The file's name in the series directory.
@@ -82,4 +83,33 @@ pub struct Damage {
     pub kind: DamageKind,
     /// In plain words, what is lost and what is not.
     pub text: String,
+}
+
+/// How much damage there is, in a few words: `in 2 places; 1 step is lost`. Empty when there is none.
+pub fn extent(damage: &[Damage]) -> String {
+    let places = damage
+        .iter()
+        .filter(|damage| damage.kind != DamageKind::Missing)
+        .count();
+    let lost = damage
+        .iter()
+        .filter(|damage| damage.kind == DamageKind::Missing);
+    let lost = lost.fold(0_u64, |sum, damage| {
+        sum.saturating_add(damage.to.saturating_sub(damage.from))
+    });
+    let mut parts = Vec::new();
+    if places > 0 {
+        parts.push(format!(
+            "in {places} {}",
+            if places == 1 { "place" } else { "places" }
+        ));
+    }
+    if lost > 0 {
+        parts.push(if lost == 1 {
+            "1 step is lost".to_string()
+        } else {
+            format!("{lost} steps are lost")
+        });
+    }
+    parts.join("; ")
 }

@@ -102,6 +102,13 @@ impl LegData {
         self.records.iter().min_by_key(|mark| mark.preface.number)
     }
 
+    /// The first record that measured a step; notes without a row of the run table do not count.
+    pub fn first_measured(&self) -> Option<&RecordMark> {
+        let rows = self.tables.first()?.record_of_row.iter();
+        rows.filter_map(|&record| self.records.get(record as usize))
+            .min_by_key(|mark| mark.preface.number)
+    }
+
     /// The record with the highest number.
     pub fn last(&self) -> Option<&RecordMark> {
         self.records.iter().max_by_key(|mark| mark.preface.number)

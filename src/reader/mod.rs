@@ -20,7 +20,7 @@ mod store;
 mod values;
 mod view;
 
-pub use error::{Damage, DamageKind, Obstacle, ReadError};
+pub use error::{Damage, DamageKind, Obstacle, ReadError, extent};
 pub use values::{ColumnValues, Values};
 pub use view::{MergedColumn, Selection, TableView};
 

@@ -142,10 +142,10 @@ fn run_table() -> Table {
         ),
         float(
             "library",
-            "step_seconds",
+            "host_seconds",
             "s",
             Kind::WallClock,
-            "Time of the host's step.",
+            "Time since the last row.",
         ),
     ]);
     Table {
@@ -196,8 +196,8 @@ fn shell_table() -> Table {
 
 fn event_table() -> Table {
     let mut columns = step_and_time();
-    columns.push(text("library", "gauge", "The gauge it is about."));
-    columns.push(text("library", "note", "What happened."));
+    columns.push(text("library", "source", "What it is about."));
+    columns.push(text("library", "text", "What happened."));
     Table {
         name: "events".into(),
         description: "Notes of the library.".into(),
