@@ -35,7 +35,7 @@ pub struct Moment {
     pub scale_factor: f64,
     /// 1/a - 1; 0 without a cosmology.
     pub redshift: f64,
-    /// Time since a = 0; without a cosmology the host's own time [s].
+    /// Time since a = 0; without a cosmology the host's own time (s).
     pub age_seconds: f64,
     /// Natural logarithm of the scale factor; 0 without a cosmology.
     pub ln_a: f64,
@@ -92,7 +92,7 @@ impl Clockwork {
         self.read(birth, self.birth, self.birth_unit_seconds)
     }
 
-    /// Time that passes between two values of the host's coordinate [s]; accurate also for short steps.
+    /// Time that passes between two values of the host's coordinate (s); accurate also for short steps.
     ///
     /// # Errors
     /// As for [`Clockwork::moment`].
@@ -314,7 +314,7 @@ pub(super) fn read(
     })
 }
 
-/// A unit of time under `key` [s], which only makes sense where the coordinate is a time.
+/// A unit of time under `key` (s), which only makes sense where the coordinate is a time.
 fn unit_of_time(section: &mut Section, key: &str, coordinate: Option<Coordinate>) -> Option<f64> {
     let seconds = section.constant(key, Dimension::TIME).optional();
     if section.has(key) && coordinate.is_some_and(|coordinate| coordinate != Coordinate::Time) {

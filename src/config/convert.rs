@@ -94,8 +94,7 @@ pub(super) fn each<T>(node: &Node, convert: impl Fn(&Node) -> Option<T>) -> Resu
 /// A unit by its name, or by its value in cgs.
 pub(super) fn unit(node: &Node, dimension: Dimension, setting: &Setting) -> Result<Unit, String> {
     match number(node) {
-        Some(value) => Unit::from_cgs(value, dimension)
-            .map_err(|error| format!("{}, which {error}", plain(value))),
+        Some(value) => Unit::from_cgs(value, dimension).map_err(|_| plain(value)),
         None => named_unit(node, dimension, setting),
     }
 }

@@ -150,7 +150,7 @@ impl Config {
         }
     }
 
-    /// The stated volume or that of the box [comoving Mpc³]; `None` where there is none.
+    /// The stated volume or that of the box (comoving Mpc³); `None` where there is none.
     pub fn comoving_volume_mpc3(&self) -> Option<f64> {
         self.volume.comoving_volume_mpc3()
     }

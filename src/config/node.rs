@@ -40,7 +40,7 @@ impl Value {
     /// How a message says what was found.
     pub(super) fn describe(&self) -> String {
         match self {
-            Value::Text(text) => format!("the text {}", quoted(text)),
+            Value::Text(text) => quoted(text),
             Value::Integer(number) => number.to_string(),
             Value::Float(number) => plain(*number),
             Value::Flag(flag) => flag.to_string(),
@@ -62,7 +62,7 @@ pub(super) fn read(text: &str, file: &Arc<str>) -> Result<Vec<Entry>, Vec<Proble
     if errors.is_empty() {
         return Ok(Converter { lines }.table(table.into_inner()));
     }
-    Err(errors
+    let mut problems: Vec<Problem> = errors
         .iter()
         .map(|error| {
             let place = lines.place(error.span().map_or(0, |span| span.start));
@@ -74,7 +74,11 @@ pub(super) fn read(text: &str, file: &Arc<str>) -> Result<Vec<Entry>, Vec<Proble
                 message,
             }
         })
-        .collect())
+        .collect();
+    problems.sort_by_key(|problem| (problem.line, problem.column));
+    // The first error of a line tends to cause the others.
+    problems.dedup_by_key(|problem| problem.line);
+    Err(problems)
 }
 
 struct Converter<'a> {

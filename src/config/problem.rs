@@ -76,3 +76,8 @@ pub(super) fn plain(number: f64) -> String {
         format!("{number:e}")
     }
 }
+
+/// A number to seven digits, without the zeros that say nothing.
+pub(super) fn brief(number: f64) -> String {
+    plain(format!("{number:.6e}").parse().unwrap_or(number))
+}

@@ -59,12 +59,10 @@ fn expanding(section: &mut Section) -> Option<(Expansion, Option<f64>)> {
             (!section.has_problems()).then_some((Expansion::Expanding(cosmology), Some(h)))
         }
         Err(error) => {
-            let key = if error.parameter.is_empty() {
-                "omega_matter"
-            } else {
-                error.parameter
-            };
-            section.refuse(key, error.message);
+            match error.parameter {
+                "" => section.reject(&error.message),
+                key => section.refuse(key, error.message),
+            }
             None
         }
     }

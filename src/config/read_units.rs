@@ -23,6 +23,11 @@ impl Form {
 /// Powers of a and h beyond this are taken for a mistake.
 const LARGEST_POWER: f64 = 10.0;
 
+const KINDS: [(&str, Positions); 2] = [
+    ("comoving", Positions::Comoving),
+    ("physical", Positions::Physical),
+];
+
 /// Reads the section; `None` where it recorded a problem.
 pub(super) fn read(section: &mut Section) -> Option<Units> {
     let setting = section.setting();
@@ -99,16 +104,7 @@ impl Reader<'_> {
     /// The unit of length without the scale factor, and whether positions are comoving: stated by an `a` in
     /// the unit, or by `positions`, or else comoving wherever space expands.
     fn length(&mut self) -> (Option<Unit>, Positions) {
-        let stated = self
-            .section
-            .choice(
-                "positions",
-                &[
-                    ("comoving", Positions::Comoving),
-                    ("physical", Positions::Physical),
-                ],
-            )
-            .optional();
+        let stated = self.section.choice("positions", &KINDS).optional();
         let by_default = if self.setting.is_expanding {
             Positions::Comoving
         } else {
@@ -154,15 +150,15 @@ impl Reader<'_> {
         } else {
             0.0
         };
-        self.set("length", Quantity::Length, unit, Form::with_a(power), true);
-        self.set(
-            "length",
-            Quantity::ComovingLength,
-            unit,
-            Form::with_a(to_comoving),
-            true,
-        );
-        (Some(unit), positions)
+        let is_usable = self.set("length", Quantity::Length, unit, Form::with_a(power), true)
+            && self.set(
+                "length",
+                Quantity::ComovingLength,
+                unit,
+                Form::with_a(to_comoving),
+                true,
+            );
+        (is_usable.then_some(unit), positions)
     }
 
     /// The unit of velocity; the form its numbers take must be stated wherever space expands.
@@ -176,13 +172,15 @@ impl Reader<'_> {
         ];
         let form = self.form("velocity_form", &NAMED);
         if form.is_none() && self.setting.is_expanding && !self.section.has("velocity_form") {
-            self.section.refuse(
+            self.section.missing(
                 "velocity_form",
-                "is missing; expected \"peculiar\", \"peculiar/sqrt(a)\", \"dx/dt\" or \"a^2 dx/dt\" with x comoving, \
+                "\"peculiar\", \"peculiar/sqrt(a)\", \"dx/dt\" or \"a^2 dx/dt\" with x comoving, \
                  or powers { a = .., h = .. } that make the number peculiar",
             );
         }
-        self.without_scale_factor("velocity", "velocity_form");
+        if self.refuses_scale_factor("velocity", Dimension::VELOCITY, "velocity_form") {
+            return None;
+        }
         self.quantity(
             "velocity",
             Quantity::Velocity,
@@ -195,7 +193,13 @@ impl Reader<'_> {
         let form = self
             .form("internal_energy_form", &[("physical", Form::AS_IT_IS)])
             .unwrap_or(Form::AS_IT_IS);
-        self.without_scale_factor("internal_energy", "internal_energy_form");
+        if self.refuses_scale_factor(
+            "internal_energy",
+            Dimension::SPECIFIC_ENERGY,
+            "internal_energy_form",
+        ) {
+            return;
+        }
         let squared = velocity.map(|velocity| velocity.power(2.0));
         self.quantity("internal_energy", Quantity::SpecificEnergy, form, squared);
     }
@@ -204,22 +208,12 @@ impl Reader<'_> {
     /// must say which kind it is.
     fn density(&mut self, by_default: Option<Result<Unit, UnitError>>, positions: Positions) {
         let key = "density_form";
-        let stated = self
-            .section
-            .choice(
-                key,
-                &[
-                    ("comoving", Positions::Comoving),
-                    ("physical", Positions::Physical),
-                ],
-            )
-            .optional();
+        let stated = self.section.choice(key, &KINDS).optional();
         if stated == Some(Positions::Comoving) && !self.setting.is_expanding {
             self.section.refuse(
                 key,
                 "found \"comoving\", but [cosmology] says expanding = false; leave it out",
             );
-            return;
         }
         let has_unit = self.section.has("density");
         let carries_a = self
@@ -239,7 +233,9 @@ impl Reader<'_> {
                  into the unit",
             );
         }
-        let is_comoving = !carries_a && stated.unwrap_or(positions) == Positions::Comoving;
+        let is_comoving = self.setting.is_expanding
+            && !carries_a
+            && stated.unwrap_or(positions) == Positions::Comoving;
         let form = if is_comoving {
             Form::with_a(-3.0)
         } else {
@@ -270,17 +266,16 @@ impl Reader<'_> {
     }
 
     /// Where a key of its own holds the power of a, the unit must not hold it too.
-    fn without_scale_factor(&mut self, key: &str, form_key: &str) {
-        if self
-            .section
-            .unit_if_right(key)
-            .is_some_and(|unit| unit.a_power != 0.0)
-        {
-            self.section.refuse(
-                key,
-                format!("found the scale factor in the unit; expected it in {form_key}"),
-            );
+    fn refuses_scale_factor(&mut self, key: &str, dimension: Dimension, form_key: &str) -> bool {
+        let unit = self.section.unit_if_right(key);
+        let has_it = unit.is_some_and(|unit| unit.a_power != 0.0 && unit.dimension == dimension);
+        if has_it {
+            // Asked for, so that it is not taken for an unknown key.
+            let _ = self.section.unit(key, dimension).optional();
+            let message = format!("found the scale factor in the unit; expected it in {form_key}");
+            self.section.refuse(key, message);
         }
+        has_it
     }
 
     /// Reads a unit and notes what one is in cgs. Without `by_default` the key is required.
@@ -328,8 +323,8 @@ impl Reader<'_> {
             );
             return None;
         }
-        self.set(key, quantity, unit, form, is_stated);
-        Some(unit)
+        self.set(key, quantity, unit, form, is_stated)
+            .then_some(unit)
     }
 
     fn has_scale_factor_for(&mut self, unit: &Unit, key: &str) -> bool {
@@ -343,41 +338,57 @@ impl Reader<'_> {
         is_fine
     }
 
-    fn set(&mut self, key: &str, quantity: Quantity, unit: Unit, form: Form, is_stated: bool) {
+    /// Notes what one of the quantity is in cgs; `false` where a problem was recorded instead.
+    fn set(
+        &mut self,
+        key: &str,
+        quantity: Quantity,
+        unit: Unit,
+        form: Form,
+        is_stated: bool,
+    ) -> bool {
+        match self.scale(unit, form) {
+            Ok((cgs, a_power)) => {
+                self.scales[quantity as usize] = Scale {
+                    cgs,
+                    a_power,
+                    is_stated,
+                };
+                true
+            }
+            Err(message) => {
+                self.section.refuse(key, message);
+                false
+            }
+        }
+    }
+
+    /// Folds h in: the value at a = 1 in cgs, and the power of a.
+    fn scale(&self, unit: Unit, form: Form) -> Result<(f64, f64), String> {
         let a_power = unit.a_power + form.a;
         let h_power = unit.h_power + form.h;
         if a_power.abs() > LARGEST_POWER || h_power.abs() > LARGEST_POWER {
-            let message =
-                format!("comes to a^{a_power} h^{h_power}; expected powers from -10 to 10");
-            return self.section.refuse(key, message);
+            return Err(format!(
+                "comes to a^{a_power} h^{h_power}; expected powers from -10 to 10"
+            ));
         }
         if a_power != 0.0 && !self.setting.is_expanding {
-            return self.section.refuse(
-                key,
-                "its form has a power of a, but [cosmology] says expanding = false",
+            return Err(
+                "its form has a power of a, but [cosmology] says expanding = false".to_string(),
             );
         }
-        let h = match self.setting.h {
-            Some(h) => h,
-            None if h_power == 0.0 => 1.0,
-            None => {
-                return self.section.refuse(
-                    key,
-                    "found h; expected hubble under [cosmology], which says what h is",
-                );
-            }
-        };
-        let cgs = unit.factor_cgs * raise(h, h_power);
-        if !cgs.is_normal() {
-            return self.section.refuse(
-                key,
-                format!("comes to {cgs:e} in cgs; expected a number in double precision"),
+        if h_power != 0.0 && self.setting.h.is_none() {
+            return Err(
+                "found h, but [cosmology] states no hubble, which would say what h is".to_string(),
             );
         }
-        self.scales[quantity as usize] = Scale {
-            cgs,
-            a_power,
-            is_stated,
-        };
+        let cgs = unit.factor_cgs * raise(self.setting.h.unwrap_or(1.0), h_power);
+        if cgs.is_normal() {
+            Ok((cgs, a_power))
+        } else {
+            Err(format!(
+                "comes to {cgs:e} in cgs; expected a number that double precision can hold"
+            ))
+        }
     }
 }

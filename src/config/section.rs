@@ -64,16 +64,7 @@ impl<T> Answer<'_, T> {
     /// The value; `None` means that a problem has been recorded.
     pub fn required(self) -> Option<T> {
         if matches!(self.found, Found::Absent) {
-            let (key, expected) = (self.key, &self.expected);
-            let message = if self.section.path.is_empty() {
-                format!("the section [{key}] is missing")
-            } else {
-                format!(
-                    "{}the key `{key}` is missing; expected {expected}",
-                    self.section.prefix()
-                )
-            };
-            self.section.push(self.section.place, message);
+            self.section.missing(self.key, &self.expected);
         }
         self.optional()
     }
@@ -276,8 +267,9 @@ impl Section {
 
     /// A unit of the given dimension: its name, or a bare number that is its value in cgs.
     pub(super) fn unit<'s>(&'s mut self, key: &'s str, dimension: Dimension) -> Answer<'s, Unit> {
-        let expected =
-            format!("the unit of {dimension}, as a text or a number that is its value in cgs");
+        let expected = format!(
+            "the unit of {dimension}, as a text or a number greater than 0 that is its value in cgs"
+        );
         self.answer_or_why(key, expected, |node, setting| {
             unit(node, dimension, setting)
         })
@@ -286,7 +278,8 @@ impl Section {
     /// A quantity that does not change with time, in cgs: a text with its unit (`"0.1 m_p cm^-3"`), or a bare
     /// number in cgs.
     pub fn constant<'s>(&'s mut self, key: &'s str, dimension: Dimension) -> Answer<'s, f64> {
-        let expected = format!("{dimension}, as a text with its unit or a number in cgs");
+        let expected =
+            format!("{dimension}, as a text with its unit or a number greater than 0 in cgs");
         self.answer_or_why(key, expected, |node, setting| {
             constant(node, dimension, setting)
         })
@@ -388,6 +381,21 @@ impl Section {
         let place = self.look(key).map_or(self.place, |entry| entry.node.place);
         let message = format!("{}{key}: {}", self.prefix(), message.as_ref());
         self.push(place, message);
+    }
+
+    /// Records a problem with the table as a whole.
+    pub fn reject(&mut self, message: &str) {
+        let message = format!("{}{message}", self.prefix());
+        self.push(self.place, message);
+    }
+
+    /// Records that a key is missing, for keys that are required only beside others.
+    pub fn missing(&mut self, key: &str, expected: &str) {
+        if self.path.is_empty() {
+            self.reject(&format!("the section [{key}] is missing"));
+        } else {
+            self.reject(&format!("the key `{key}` is missing; expected {expected}"));
+        }
     }
 
     /// The problem that this table's own name is not among `known`; `what` says what they are.

@@ -1,5 +1,6 @@
 //! What a config comes to, in plain words.
 
+use super::problem::brief;
 use super::{Config, Coordinate};
 use crate::units::constants::GIGAYEAR;
 use crate::units::{Cosmology, Expansion, Parameters};
@@ -35,7 +36,7 @@ impl Config {
             super::BirthStamp::StepStart => "starts",
         };
         format!(
-            "the clock counts in {clock}, births in {births}; a star is born when its step {stamp}"
+            "the clock counts in {clock}, births in {births}; a birth time is the moment the star's step {stamp}"
         )
     }
 
@@ -54,7 +55,7 @@ impl Config {
             format!("a box of {x} x {y} x {z} host lengths at a = 1, periodic in {axes}; ")
         });
         let volume = match self.volume.comoving_volume_mpc3() {
-            Some(volume) => format!("densities refer to {volume:.7e} comoving Mpc^3"),
+            Some(volume) => format!("densities refer to {} comoving Mpc^3", brief(volume)),
             None => "none, densities are not measured".to_string(),
         };
         edges.unwrap_or_default() + &volume
@@ -72,8 +73,8 @@ fn of_cosmology(cosmology: &Cosmology) -> String {
     let age = cosmology.age(1.0) / GIGAYEAR;
     format!(
         "cosmology: h = {h}, omega_matter = {omega_matter}, omega_lambda = {omega_lambda}, omega_radiation = \
-         {omega_radiation}, curvature = {:.6}, w = {w}; age {age:.4} Gyr at a = 1",
-        cosmology.omega_curvature()
+         {omega_radiation}, curvature = {}, w = {w}; age {age:.4} Gyr at a = 1",
+        brief(cosmology.omega_curvature())
     )
 }
 

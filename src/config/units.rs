@@ -1,5 +1,6 @@
 //! What one of each of the host's quantities is in cgs.
 
+use super::problem::brief;
 use crate::units::constants::{GIGAYEAR, KILOPARSEC, SOLAR_MASS, YEAR};
 use crate::units::{Dimension, raise};
 
@@ -160,32 +161,32 @@ impl Units {
     pub fn statements(&self) -> Vec<String> {
         Quantity::ALL
             .iter()
-            .map(|quantity| {
-                let scale = self.scale(*quantity);
-                let (name, value) = quantity.customary();
-                let base = quantity.dimension().in_base_units();
-                let power = match scale.a_power {
-                    0.0 => String::new(),
-                    1.0 => " * a".to_string(),
-                    power => format!(" * a^{power}"),
-                };
-                let customary = if name == base {
-                    String::new()
-                } else {
-                    format!(" = {:.7e} {name}{power}", scale.cgs / value)
-                };
-                let source = if scale.is_stated {
-                    ""
-                } else {
-                    " (follows from the others)"
-                };
-                format!(
-                    "{}: 1 = {:.7e} {base}{power}{customary}{source}",
-                    quantity.name(),
-                    scale.cgs
-                )
-            })
+            .map(|quantity| self.statement(*quantity))
             .collect()
+    }
+
+    /// `length: 1 = 4.408111e24 cm * a = 1428.571 kpc * a`
+    fn statement(&self, quantity: Quantity) -> String {
+        let scale = self.scale(quantity);
+        let power = match scale.a_power {
+            0.0 => String::new(),
+            1.0 => " * a".to_string(),
+            power => format!(" * a^{power}"),
+        };
+        let base = quantity.dimension().in_base_units();
+        let mut line = format!(
+            "{}: 1 = {} {base}{power}",
+            quantity.name(),
+            brief(scale.cgs)
+        );
+        let (customary, value) = quantity.customary();
+        if customary != base {
+            line += &format!(" = {} {customary}{power}", brief(scale.cgs / value));
+        }
+        if !scale.is_stated {
+            line += " (follows from the others)";
+        }
+        line
     }
 
     fn scale(&self, quantity: Quantity) -> Scale {

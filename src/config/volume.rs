@@ -33,7 +33,7 @@ impl Volume {
         self.periodic
     }
 
-    /// The comoving volume that densities refer to [Mpc³]; `None` where none is stated.
+    /// The comoving volume that densities refer to (Mpc³); `None` where none is stated.
     pub fn comoving_volume_mpc3(&self) -> Option<f64> {
         self.comoving_mpc3
     }
@@ -58,9 +58,9 @@ pub(super) fn read(section: &mut Section, units: Option<&Units>) -> Option<Volum
         );
     }
     if !is_none && !is_stated {
-        section.refuse(
+        section.missing(
             "box",
-            "is missing; expected box, or comoving_volume, or none = true where there is no volume",
+            "box, or comoving_volume, or none = true where there is no volume",
         );
     }
     let comoving_mpc3 = stated_mpc3.or(box_mpc3);
@@ -161,9 +161,9 @@ fn periodic(section: &mut Section, has_box: bool) -> [bool; 3] {
         // Asked for, so that a slip in another key can point to it.
         let missing = section.flag(key).optional().is_none();
         if has_box && missing {
-            section.refuse(
+            section.missing(
                 key,
-                "is missing; expected true, false or a list of three of them, for x, y and z",
+                "true, false or a list of three of them, for x, y and z",
             );
         }
         return [false; 3];

@@ -1,10 +1,10 @@
 //! The expansion of a homogeneous universe with matter, radiation, curvature and dark energy of constant w.
 //!
 //! H²(a)/H0² = E²(a) = Ωr a⁻⁴ + Ωm a⁻³ + Ωk a⁻² + ΩΛ a^(−3(1+w)), with Ωk = 1 − Ωm − ΩΛ − Ωr: the Friedmann
-//! equation as in Peebles 1993, "Principles of Physical Cosmology", chapter 13. Ages are integrals of
-//! dx/H over x = ln a. In that variable every term of E² is an exponential, so the integrand is smooth on
-//! the scale of an e-fold and Gauss–Legendre panels converge to rounding; below the first panel only matter
-//! and radiation are left and the integral is known in closed form.
+//! equation, as in Hogg 1999 (astro-ph/9905116), eq. 14, with the usual terms of radiation and w added. Ages are
+//! integrals of dx/H over x = ln a. In that variable every term of E² is an exponential, so the integrand is
+//! smooth on the scale of an e-fold and Gauss–Legendre panels converge to rounding; below the first panel only
+//! matter and radiation are left and the integral is known in closed form.
 
 use std::fmt;
 
@@ -36,7 +36,7 @@ pub enum Expansion {
 }
 
 impl Expansion {
-    /// Expansion rate at scale factor `a` [s⁻¹]; 0 when static.
+    /// Expansion rate at scale factor `a` (s⁻¹); 0 when static.
     pub fn hubble_rate(&self, a: f64) -> f64 {
         self.cosmology()
             .map_or(0.0, |cosmology| cosmology.hubble_rate(a))
@@ -96,8 +96,9 @@ const LOWEST: f64 = -40.0;
 const REQUIRED: f64 = 2.0;
 /// Scale factor up to which ages are laid out when the cosmology allows.
 const FARTHEST: f64 = 1000.0;
-/// E² may cancel down to this fraction of its terms: beyond, ages would lose their ninth digit.
-const LEAST_RATE: f64 = 2e-5;
+/// E² may cancel down to this fraction of its terms: beyond, ages would begin to lose digits, and a halt could
+/// hide between the points at which it is looked for.
+const LEAST_RATE: f64 = 1e-4;
 /// Widest panel in ln a.
 const WIDEST: f64 = 1.0;
 
@@ -123,24 +124,21 @@ impl Cosmology {
             panels: Vec::new(),
             largest: FARTHEST,
         };
-        if cosmology.halts_before(FARTHEST).is_some() {
-            cosmology.largest = REQUIRED;
-            if let Some(a) = cosmology.halts_before(REQUIRED) {
-                return Err(CosmologyError {
-                    parameter: "",
-                    message: format!(
-                        "omega_matter = {}, omega_lambda = {}, omega_radiation = {}, w = {} describe a universe \
-                         that stops expanding near a = {a:.3}; expected one that expands from a = 0 to a = 2",
-                        parameters.omega_matter,
-                        parameters.omega_lambda,
-                        parameters.omega_radiation,
-                        parameters.w
-                    ),
-                });
-            }
+        match cosmology.first_halt() {
+            None => {}
+            Some(a) if a > REQUIRED => cosmology.largest = REQUIRED,
+            Some(a) => return Err(cosmology.refusal(a)),
         }
         cosmology.lay_panels();
-        Ok(cosmology)
+        // A halt too narrow to have been found leaves no usable ages.
+        match cosmology
+            .panels
+            .iter()
+            .find(|panel| !panel.span.is_finite())
+        {
+            None => Ok(cosmology),
+            Some(panel) => Err(cosmology.refusal(panel.start.exp())),
+        }
     }
 
     /// The parameters as given.
@@ -163,18 +161,18 @@ impl Cosmology {
         self.largest
     }
 
-    /// Expansion rate H(a) [s⁻¹].
+    /// Expansion rate H(a) (s⁻¹).
     pub fn hubble_rate(&self, a: f64) -> f64 {
         self.hubble_constant() * self.rate_squared(1.0 / a, a.ln()).sqrt()
     }
 
-    /// Critical density 3H²/(8πG) at scale factor `a` [g cm⁻³, physical].
+    /// Critical density 3H²/(8πG) at scale factor `a` (g cm⁻³, physical).
     pub fn critical_density(&self, a: f64) -> f64 {
         let rate = self.hubble_rate(a);
         3.0 * rate * rate / (8.0 * std::f64::consts::PI * GRAVITATION)
     }
 
-    /// Time since a = 0 [s]; NaN when `a` is not in (0, [`Cosmology::largest_scale_factor`]].
+    /// Time since a = 0 (s); NaN when `a` is not in (0, [`Cosmology::largest_scale_factor`]].
     ///
     /// Relative error below 1e-12.
     pub fn age(&self, a: f64) -> f64 {
@@ -225,7 +223,7 @@ impl Cosmology {
         Some(x.exp().min(self.largest))
     }
 
-    /// Time from scale factor `from` to `to` [s], negative when `to` is the smaller; accurate also where
+    /// Time from scale factor `from` to `to` (s), negative when `to` is the smaller; accurate also where
     /// the two ages would cancel. NaN when either is out of range.
     pub fn time_between(&self, from: f64, to: f64) -> f64 {
         if !(from > 0.0 && from <= self.largest && to > 0.0 && to <= self.largest) {
@@ -270,7 +268,7 @@ impl Cosmology {
         }
     }
 
-    /// H0 [s⁻¹].
+    /// H0 (s⁻¹).
     fn hubble_constant(&self) -> f64 {
         100.0 * self.parameters.h * KM_PER_S_PER_MPC
     }
@@ -314,9 +312,8 @@ impl Cosmology {
         panel.age + integrate(panel.start, x - panel.start, |x| self.inverse_rate(x))
     }
 
-    /// H0 times the age when there is only matter and radiation:
-    /// ∫ a da / √(Ωr + Ωm a) = 2/3 a² (s + 2q)/(s + q)², with s² = Ωr + Ωm a and q² = Ωr, which is the textbook
-    /// form (Peebles 1993, section 6) written so that nothing cancels.
+    /// H0 times the age when there is only matter and radiation: the textbook integral ∫ a da/√(Ωr + Ωm a), written
+    /// as 2/3 a² (s + 2q)/(s + q)² with s² = Ωr + Ωm a and q² = Ωr, so that nothing cancels.
     fn early_age(&self, a: f64) -> f64 {
         let Parameters {
             omega_matter,
@@ -386,21 +383,50 @@ impl Cosmology {
         }
     }
 
-    /// The scale factor up to `limit` at which E² comes too near to 0, if there is one.
-    fn halts_before(&self, limit: f64) -> Option<f64> {
-        const POINTS: u32 = 20_000;
+    /// The smallest scale factor at which E² comes too near to 0, if there is one.
+    fn first_halt(&self) -> Option<f64> {
+        const POINTS: u32 = 1000;
+        let Parameters {
+            omega_matter,
+            omega_lambda,
+            ..
+        } = self.parameters;
         let margin = |x: f64| {
             let inverse = (-x).exp();
-            let matter = inverse * inverse * inverse * self.parameters.omega_matter;
+            let matter = inverse * inverse * inverse * omega_matter;
             let curvature = (inverse * inverse * self.omega_curvature).abs();
             let terms = matter + curvature + self.dark_energy(x).abs();
             self.rate_squared(inverse, x) / terms - LEAST_RATE
         };
-        let (start, end) = (LOWEST, limit.ln());
+        // Before this matter outweighs what could be negative: curvature falls behind it by a factor a at least,
+        // and so does dark energy, whose w is at most -1/3.
+        let other = self.omega_curvature.abs() + omega_lambda.abs();
+        let start = (0.5 * omega_matter / other.max(1e-3))
+            .ln()
+            .clamp(LOWEST, 0.0);
+        let width = (FARTHEST.ln() - start) / f64::from(POINTS);
         (0..=POINTS)
-            .map(|point| start + (end - start) * f64::from(point) / f64::from(POINTS))
+            .map(|point| start + width * f64::from(point))
             .find(|x| margin(*x).is_nan() || margin(*x) <= 0.0)
             .map(f64::exp)
+    }
+
+    fn refusal(&self, a: f64) -> CosmologyError {
+        let Parameters {
+            omega_matter,
+            omega_lambda,
+            omega_radiation,
+            w,
+            ..
+        } = self.parameters;
+        let message = format!(
+            "omega_matter = {omega_matter}, omega_lambda = {omega_lambda}, omega_radiation = {omega_radiation}, w = {w} \
+             describe a universe that stops expanding near a = {a:.3}; expected one that expands from a = 0 to a = 2"
+        );
+        CosmologyError {
+            parameter: "",
+            message,
+        }
     }
 }
 

@@ -23,7 +23,7 @@ pub struct Unit {
 /// Names whose value a host may hold to differ.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Symbols {
-    /// What `Msun` is to the host [g].
+    /// What `Msun` is to the host (g).
     pub solar_mass_g: f64,
 }
 
