@@ -7,6 +7,7 @@ mod common;
 
 use common::record;
 use limnograph::reader::{Selection, SeriesReader};
+use limnograph::series::record::Value;
 
 #[test]
 fn format_1_reads_as_it_was_written() {
@@ -34,12 +35,30 @@ fn format_1_reads_as_it_was_written() {
             .flat_map(|step| record(step).rows)
             .filter(|row| row.table == number as u32);
         for (row, expected) in expected.enumerate() {
-            let read: Vec<_> = columns.iter().map(|column| column.value(row)).collect();
-            assert_eq!(read, expected.values, "{name}, row {row}");
+            for (column, value) in columns.iter().zip(&expected.values) {
+                assert!(
+                    is_same(&column.value(row), value),
+                    "{name}, row {row}: {value:?}"
+                );
+            }
         }
     }
+    let last = reader
+        .last_record(None, 0.0)
+        .expect("reads")
+        .expect("a record");
     assert_eq!(
-        reader.last_record(None, 0.0).expect("reads"),
-        Some(record(15))
+        (last.step, last.time, last.carry),
+        (15, record(15).time, vec![15, 225])
     );
+}
+
+/// Sines and exponentials of another machine's mathematical library may differ in the last digit.
+fn is_same(read: &Value, expected: &Value) -> bool {
+    match (read, expected) {
+        (Value::Float(read), Value::Float(expected)) => {
+            (read - expected).abs() <= 1e-13 * expected.abs() + 1e-30
+        }
+        _ => read == expected,
+    }
 }
