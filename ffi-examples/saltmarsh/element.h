@@ -15,7 +15,6 @@ struct element {
     double density;       /* comoving */
     double pressure_term; /* P / rho^2 with the kernel's gradient correction */
     double sound_speed;
-    double limiter;       /* of viscosity: 1 in compression, 0 in pure rotation */
     int32_t uncoupled;    /* a wind particle on its way out: neither feels nor exerts pressure */
     int32_t fate;
 };

@@ -16,8 +16,7 @@ struct gas_space {
     struct neighbour_tree tree;
     struct candidates candidates;
     struct store near;           /* struct near: neighbours of own gas, within its own radius */
-    struct store near_ordered;   /* scratch for the above */
-    struct store near_start;     /* size_t: own count + 1 offsets into near */
+    struct store near_lists;     /* struct near_list: one per own gas particle */
     struct store pushes;         /* struct push: one per element */
 };
 
@@ -25,6 +24,11 @@ struct near {
     uint32_t index;   /* of the element */
     float towards[3]; /* unit vector from the neighbour to the particle */
     double distance;
+};
+
+struct near_list {
+    size_t start;     /* in near */
+    size_t count;
 };
 
 /* What pressure does to an element. */
@@ -59,9 +63,9 @@ static inline struct element *gas_element(const struct gas_space *space, size_t 
 
 static inline const struct near *gas_near(const struct gas_space *space, size_t own, size_t *count)
 {
-    const size_t *start = store_at(&space->near_start, own);
-    *count = start[1] - start[0];
-    return (const struct near *)store_at(&space->near, start[0]);
+    const struct near_list *list = store_at(&space->near_lists, own);
+    *count = list->count;
+    return (const struct near *)store_at(&space->near, list->start);
 }
 
 #endif

@@ -2,7 +2,6 @@
  * of them (Springel & Hernquist 2002, MNRAS 333, 649, also for the gradient correction). */
 #include <math.h>
 #include <stdlib.h>
-#include <string.h>
 
 #include "gas.h"
 #include "kernel.h"
@@ -144,71 +143,44 @@ static void set_state(const struct simulation *simulation, struct element *eleme
 /* Sums over one particle's neighbours. */
 struct sums {
     double density;
-    double radius_slope;   /* of density, by the radius */
-    double divergence;     /* density times div v, comoving derivative of peculiar velocity */
-    double curl[3];
+    double radius_slope; /* of density, by the radius */
 };
-
-static void add_neighbour(struct sums *sums, const struct element *self,
-                          const struct element *other, const struct near *near)
-{
-    double radius = self->radius, q = near->distance / radius, cube = radius * radius * radius;
-    double value = kernel_shape(q) / cube, slope = kernel_slope(q) / (cube * radius);
-    sums->density += other->mass * value;
-    sums->radius_slope -= other->mass * (3.0 * value / radius + q * slope);
-    double v[3];
-    for (int axis = 0; axis < 3; axis++)
-        v[axis] = other->mass * slope * (other->velocity[axis] - self->velocity[axis]);
-    const float *e = near->towards;
-    sums->divergence += v[0] * e[0] + v[1] * e[1] + v[2] * e[2];
-    sums->curl[0] += v[1] * e[2] - v[2] * e[1];
-    sums->curl[1] += v[2] * e[0] - v[0] * e[2];
-    sums->curl[2] += v[0] * e[1] - v[1] * e[0];
-}
-
-/* Viscosity is for compression, not for shear (Balsara 1995, J. Comput. Phys. 121, 357). */
-static double viscosity_limiter(const struct sums *sums, double a, double hubble,
-                                double sound_speed, double radius)
-{
-    double divergence = fabs(sums->divergence / (sums->density * a) + 3.0 * hubble);
-    double curl = sqrt(sums->curl[0] * sums->curl[0] + sums->curl[1] * sums->curl[1] +
-                       sums->curl[2] * sums->curl[2]) / (sums->density * a);
-    return divergence / (divergence + curl + 1e-4 * sound_speed / (a * radius));
-}
 
 /* Lists the neighbours of an own particle and sums over them. */
 static struct sums gather(struct gas_space *space, size_t own, const struct surroundings *around,
                           const double place[3])
 {
-    struct element *self = gas_element(space, own);
+    double radius = gas_element(space, own)->radius, per_radius = 1.0 / radius;
+    double per_cube = per_radius * per_radius * per_radius;
     const struct candidates *candidates = &space->candidates;
-    struct sums sums = { 0.0, 0.0, 0.0, { 0.0, 0.0, 0.0 } };
-    size_t listed = space->near.count;
-    store_resize(&space->near, listed + around->count);
-    struct near *near = store_at(&space->near, listed);
+    struct sums sums = { 0.0, 0.0 };
+    struct near_list *list = store_at(&space->near_lists, own);
+    list->start = space->near.count;
+    store_resize(&space->near, list->start + around->count);
+    struct near *near = store_at(&space->near, list->start);
     for (size_t i = 0; i < around->count; i++) {
-        if (around->distance[i] >= self->radius)
+        double distance = around->distance[i], q = distance * per_radius;
+        if (q >= 1.0)
             continue;
         size_t candidate = around->candidate[i];
-        double per_distance = around->distance[i] > 0.0 ? 1.0 / around->distance[i] : 0.0;
+        double per_distance = distance > 0.0 ? 1.0 / distance : 0.0;
         near->index = (uint32_t)candidates->index[candidate];
-        near->distance = around->distance[i];
+        near->distance = distance;
         for (int axis = 0; axis < 3; axis++)
             near->towards[axis] =
                 (float)((place[axis] - candidates->offset[axis][candidate]) * per_distance);
-        add_neighbour(&sums, self, gas_element(space, near->index), near);
+        double mass = gas_element(space, near->index)->mass;
+        double shape = kernel_shape(q);
+        sums.density += mass * shape;
+        sums.radius_slope -= mass * (3.0 * shape + q * kernel_slope(q));
         near++;
-        listed++;
     }
-    space->near.count = listed;
+    list->count = (size_t)(near - (struct near *)store_at(&space->near, list->start));
+    space->near.count = list->start + list->count;
+    sums.density *= per_cube;
+    sums.radius_slope *= per_cube * per_radius;
     return sums;
 }
-
-/* The length of each list is not known before its turn, and leaves are not in particle order. */
-struct list_place {
-    size_t start;
-    size_t count;
-};
 
 static void finish(struct gas_space *space, const struct simulation *simulation, size_t own,
                    const struct sums *sums, double before)
@@ -216,6 +188,7 @@ static void finish(struct gas_space *space, const struct simulation *simulation,
     struct gas *gas = gas_at(&simulation->species[GAS], own);
     struct element *element = gas_element(space, own);
     double a = simulation->clock.scale_factor;
+    size_t count;
     if (gas->density > 0.0) {
         double thinning = before / a;
         double ratio = sums->density / gas->density * thinning * thinning * thinning;
@@ -223,17 +196,16 @@ static void finish(struct gas_space *space, const struct simulation *simulation,
     }
     gas->density = sums->density;
     gas->smoothing_length = element->radius;
+    gas_near(space, own, &count);
+    gas->neighbours = (uint32_t)count;
     double correction = 1.0 + element->radius / (3.0 * sums->density) * sums->radius_slope;
     element->pressure_term = 1.0 / fmin(fmax(correction, 0.3), 3.0);
     set_state(simulation, element, gas);
-    double hubble = hubble_rate(&simulation->parameters.cosmology, a);
-    element->limiter =
-        viscosity_limiter(sums, a, hubble, element->sound_speed, element->radius);
 }
 
 static void density_of_leaf(struct gas_space *space, const struct simulation *simulation,
                             const struct tree_node *leaf, struct surroundings *around,
-                            struct list_place *lists, double before)
+                            double before)
 {
     const struct parameters *parameters = &simulation->parameters;
     double reach = 0.0, largest = LARGEST_RADIUS * parameters->box;
@@ -258,34 +230,9 @@ static void density_of_leaf(struct gas_space *space, const struct simulation *si
         sift(around, &space->candidates, place, GROWTH * element->radius);
         element->radius =
             find_radius(around, element->radius, parameters->neighbours, smallest, largest);
-        lists[own].start = space->near.count;
         struct sums sums = gather(space, own, around, place);
-        lists[own].count = space->near.count - lists[own].start;
-        gas_at(&simulation->species[GAS], own)->neighbours = (uint32_t)lists[own].count;
         finish(space, simulation, own, &sums, before);
     }
-}
-
-/* Puts the lists into particle order. */
-static void order_lists(struct gas_space *space, const struct list_place *lists)
-{
-    size_t own = space->ghosts.own;
-    struct store *ordered = &space->near_ordered;
-    store_resize(ordered, space->near.count);
-    store_resize(&space->near_start, own + 1);
-    size_t *start = (size_t *)(void *)space->near_start.items;
-    size_t next = 0;
-    for (size_t i = 0; i < own; i++) {
-        start[i] = next;
-        if (lists[i].count > 0)
-            memcpy(store_at(ordered, next), store_at(&space->near, lists[i].start),
-                   lists[i].count * ordered->item_size);
-        next += lists[i].count;
-    }
-    start[own] = next;
-    struct store unordered = space->near;
-    space->near = *ordered;
-    *ordered = unordered;
 }
 
 void gas_density(struct gas_space *space, struct simulation *simulation, struct lag lag,
@@ -295,15 +242,13 @@ void gas_density(struct gas_space *space, struct simulation *simulation, struct 
     ghosts_fetch(&space->ghosts, &space->elements, simulation->parameters.box, GROWTH);
     tree_build(&space->tree, &space->elements);
     space->near.count = 0;
-    struct list_place *lists = allocate(space->ghosts.own, sizeof *lists);
+    store_resize(&space->near_lists, space->ghosts.own);
     struct surroundings around = { 0, 0, NULL, NULL, NULL };
     for (size_t n = 0; n < space->tree.nodes.count; n++) {
         const struct tree_node *node = tree_node(&space->tree, n);
         if (node->left == 0)
-            density_of_leaf(space, simulation, node, &around, lists, before);
+            density_of_leaf(space, simulation, node, &around, before);
     }
-    order_lists(space, lists);
     surroundings_free(&around);
-    free(lists);
     ghosts_refresh(&space->ghosts, &space->elements);
 }

@@ -21,8 +21,7 @@ void gas_space_init(struct gas_space *space, const struct simulation *simulation
     tree_init(&space->tree, simulation->parameters.box);
     candidates_init(&space->candidates);
     store_init(&space->near, sizeof(struct near));
-    store_init(&space->near_ordered, sizeof(struct near));
-    store_init(&space->near_start, sizeof(size_t));
+    store_init(&space->near_lists, sizeof(struct near_list));
     store_init(&space->pushes, sizeof(struct push));
 }
 
@@ -33,8 +32,7 @@ void gas_space_free(struct gas_space *space)
     tree_free(&space->tree);
     candidates_free(&space->candidates);
     store_free(&space->near);
-    store_free(&space->near_ordered);
-    store_free(&space->near_start);
+    store_free(&space->near_lists);
     store_free(&space->pushes);
 }
 
@@ -52,8 +50,7 @@ static void push_pair(const struct element *self, const struct element *other,
     if (approach < 0.0) {
         signal -= 3.0 * approach;
         double viscous = -0.5 * VISCOSITY * signal * approach /
-                         (0.5 * (self->density + other->density)) *
-                         0.5 * (self->limiter + other->limiter);
+                         (0.5 * (self->density + other->density));
         /* Half, as the other half comes with the partner's kernel; likewise the heat is shared. */
         double half = 0.5 * viscous * slope;
         strength += half;

@@ -7,7 +7,7 @@
 #include "element.h"
 #include "numbers.h"
 
-#define LEAF_SIZE 8
+#define LEAF_SIZE 16
 /* Halving 2^64 elements down to leaves nests no deeper. */
 #define DEEPEST 64
 

@@ -23,7 +23,7 @@ void parameters_default(struct parameters *parameters)
         .end_redshift = 0.0,
         .max_log_step = 0.01,
         .neighbours = 40.0,
-        .smallest_cells = 0.7,
+        .smallest_cells = 1.0,
         .initial_kelvin = 15.0,
         .reionisation_redshift = 7.0,
         .jeans_cells = 2.0,

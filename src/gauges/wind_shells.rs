@@ -25,6 +25,7 @@ use crate::series::schema::{Column, Kind, ValueType};
 use crate::sweep::{Block, Work};
 use crate::units::Dimension;
 use crate::units::constants::{KILOPARSEC, SOLAR_MASS, YEAR};
+use multiversion::multiversion;
 
 const OUTWARD: usize = 0;
 const INWARD: usize = 1;
@@ -349,37 +350,29 @@ impl Gauge for WindShells {
         if shells.fitting == 0 {
             return;
         }
-        let [x, y, z] = block.vector(Field::Position);
+        let position = block.vector(Field::Position);
         let [vx, vy, vz] = block.vector(Field::Velocity);
         let mass = block.scalar(Field::Mass);
         let periods = self.periods(moment);
         let [dx, dy, dz, radius] = work.runs(block.len());
-        for (axis, (from, to)) in [(x, &mut *dx), (y, &mut *dy), (z, &mut *dz)]
-            .into_iter()
-            .enumerate()
-        {
-            let centre = self.position[axis];
+        for (axis, to) in [&mut *dx, &mut *dy, &mut *dz].into_iter().enumerate() {
             match periods[axis] {
-                Some(period) => from
-                    .iter()
-                    .zip(to)
-                    .for_each(|(&at, d)| *d = nearest_image(at - centre, period)),
-                None => from.iter().zip(to).for_each(|(&at, d)| *d = at - centre),
+                Some(period) => nearest_images(position[axis], self.position[axis], period, to),
+                None => differences(position[axis], self.position[axis], to),
             }
         }
-        for index in 0..block.len() {
-            radius[index] =
-                (dx[index] * dx[index] + dy[index] * dy[index] + dz[index] * dz[index]).sqrt();
-        }
+        lengths(dx, dy, dz, radius);
         let edges = &self.edges[..=shells.fitting];
         let first = edges[0] * shells.scale;
         let last = edges[shells.fitting] * shells.scale;
-        for index in 0..block.len() {
-            let r = radius[index];
+        for (index, &r) in radius.iter().enumerate() {
             if !(first <= r && r < last) {
                 continue;
             }
-            let shell = edges.partition_point(|edge| edge * shells.scale <= r) - 1;
+            let shell = edges[1..shells.fitting]
+                .iter()
+                .filter(|&edge| edge * shells.scale <= r)
+                .count();
             let relative = [
                 vx[index] - self.velocity[0],
                 vy[index] - self.velocity[1],
@@ -441,7 +434,26 @@ impl Gauge for WindShells {
     }
 }
 
-/// The distance to the nearest periodic image; any number of boxes away.
-fn nearest_image(distance: f64, period: f64) -> f64 {
-    distance - period * (distance / period).round()
+/// Distances from a centre.
+fn differences(from: &[f64], centre: f64, to: &mut [f64]) {
+    from.iter().zip(to).for_each(|(&at, d)| *d = at - centre);
+}
+
+/// Distances from a centre to the nearest periodic image; any number of boxes away.
+#[multiversion(targets("x86_64+avx+avx2", "aarch64+neon"))]
+fn nearest_images(from: &[f64], centre: f64, period: f64, to: &mut [f64]) {
+    // Adding and subtracting 1.5·2^52 rounds to the nearest whole number, ties to even.
+    const WHOLE: f64 = 6_755_399_441_055_744.0;
+    for (&at, d) in from.iter().zip(to) {
+        let distance = at - centre;
+        *d = distance - period * ((distance / period + WHOLE) - WHOLE);
+    }
+}
+
+/// Lengths of vectors.
+#[multiversion(targets("x86_64+avx+avx2", "aarch64+neon"))]
+fn lengths(x: &[f64], y: &[f64], z: &[f64], to: &mut [f64]) {
+    for (((&x, &y), &z), length) in x.iter().zip(y).zip(z).zip(to) {
+        *length = (x * x + y * y + z * z).sqrt();
+    }
 }

@@ -245,10 +245,9 @@ struct Prepared {
 
 impl Prepared {
     fn new(path: &str, text: &str, threads: usize) -> Result<Prepared, Fault> {
-        let mut config = Config::parse(text, path).map_err(|problems| bad_config(&problems))?;
+        let config = Config::parse(text, path).map_err(|problems| bad_config(&problems))?;
         let mut plan = Plan::new(rows::own_tables(&config));
-        let gauges =
-            gauges::build(&mut config, &mut plan).map_err(|problems| bad_config(&problems))?;
+        let gauges = gauges::build(&config, &mut plan).map_err(|problems| bad_config(&problems))?;
         let words = Words::new(&plan);
         plan.tables[0].columns.extend(rows::closing_columns(&words));
         let threads = if threads > 0 {
