@@ -1,7 +1,8 @@
 # limnograph. `make` alone says what can be made.
 
 BUILD   ?= target
-PROFILE ?= release
+# quick: what demo and tests use, built in less time; release: what bench and install use.
+PROFILE ?= quick
 PREFIX  ?= /usr/local
 LIBDIR  ?= $(PREFIX)/lib
 DESTDIR ?=
@@ -15,14 +16,14 @@ CFLAGS  ?= -O3
 FFLAGS  ?= -O3
 CARGO  ?= $(or $(shell command -v cargo),$(wildcard $(HOME)/.cargo/bin/cargo),cargo)
 export PATH := $(PATH):$(HOME)/.cargo/bin
-export BUILD MPICC MPIF90
+export BUILD MPICC MPIF90 STAGE
 
 VERSION := $(shell sed -n 's/^version = "\(.*\)"/\1/p' Cargo.toml | head -n 1)
 MAJOR   := $(firstword $(subst ., ,$(VERSION)))
-ROOT    := $(abspath $(BUILD))
-LIB     := $(BUILD)/lib
-HOST    := $(BUILD)/host
-PROGRAM := $(BUILD)/bin/limnograph
+STAGE   := $(if $(filter quick,$(PROFILE)),$(BUILD),$(BUILD)/$(PROFILE))
+LIB     := $(STAGE)/lib
+HOST    := $(STAGE)/host
+PROGRAM := $(STAGE)/bin/limnograph
 PYTHON  := $(BUILD)/python/bin/python
 ALONE   := $(BUILD)/alone/$(PROFILE)
 MPI     := $(BUILD)/mpi/$(PROFILE)
@@ -36,7 +37,7 @@ say = @printf '\n== %s\n'
 .DEFAULT_GOAL := help
 .DELETE_ON_ERROR:
 .SUFFIXES:
-.PHONY: help demo test bench install libraries program hosts clean FORCE \
+.PHONY: help demo test bench run-bench install install-files libraries program hosts clean FORCE \
 	prepare-base prepare-mpi prepare-hosts prepare-tests \
 	test-format test-lints test-rust test-mpi test-hosts test-python
 
@@ -104,8 +105,8 @@ SALTMARSH     := $(HOST)/saltmarsh
 SALTMARSH_SOURCES := $(wildcard ffi-examples/saltmarsh/*.c)
 SALTMARSH_OBJECTS := $(patsubst ffi-examples/%.c,$(HOST)/objects/%.o,$(SALTMARSH_SOURCES))
 # The shared libraries are found where they were built.
-LINK_ALONE := -L$(LIB) -Wl,-rpath,$(ROOT)/lib -llimnograph
-LINK_MPI   := -L$(LIB) -Wl,-rpath,$(ROOT)/lib -llimnograph_mpi
+LINK_ALONE := -L$(LIB) -Wl,-rpath,$(abspath $(LIB)) -llimnograph
+LINK_MPI   := -L$(LIB) -Wl,-rpath,$(abspath $(LIB)) -llimnograph_mpi
 C_STRICT   := -std=c99 -Wall -Wextra -Iinclude
 F_STRICT   := -std=f2008 -Wall -Wextra
 
@@ -174,7 +175,9 @@ $(PYTHON): tests/astropy/requirements.txt | prepare-tests
 	@$(PYTHON) -m pip install --quiet --disable-pip-version-check -r $<
 	@touch $@
 
-bench: prepare-hosts libraries program
+bench:
+	@+$(MAKE) --no-print-directory PROFILE=release run-bench
+run-bench: prepare-hosts libraries program hosts
 	@bench/run.sh
 
 # --- Install ------------------------------------------------------------------------------------------
@@ -188,7 +191,9 @@ comma := ,
 # Programs find a library in an unusual place by themselves.
 RPATH := $(if $(filter /usr /usr/local,$(PREFIX)),,-Wl,-rpath,$${libdir})
 
-install: libraries program
+install:
+	@+$(MAKE) --no-print-directory PROFILE=release install-files
+install-files: libraries program
 	@install -d $(TO)/bin $(TO)/include $(TO_LIB)/pkgconfig $(TO)/share/doc/limnograph
 	@install -m 755 $(PROGRAM) $(TO)/bin/
 	@install -m 644 include/limnograph.h $(if $(MPI_IF_WANTED),include/limnograph_mpi.h) \

@@ -14,11 +14,12 @@
 set -uo pipefail
 
 export BUILD=${BUILD:-target}
-export HOSTS=$BUILD/host LIMNOGRAPH=$BUILD/bin/limnograph MPIRUN_SH=scripts/mpirun.sh
+STAGE=${STAGE:-$BUILD}
+export HOSTS=$STAGE/host LIMNOGRAPH=$STAGE/bin/limnograph MPIRUN_SH=scripts/mpirun.sh
 : "${CC:=cc}" "${MPICC:=mpicc}" "${MPIF90:=mpif90}"
 limit=300
 place=$BUILD/test/hosts
-lib=$(cd "$BUILD/lib" && pwd)
+lib=$(cd "$STAGE/lib" && pwd)
 passed=0 failed=0
 filters=("$@")
 rm -rf "$place"
