@@ -1,8 +1,7 @@
 # limnograph. `make` alone says what can be made.
 
 BUILD   ?= target
-# quick: what demo and tests use, built in less time; release: what bench and install use.
-PROFILE ?= quick
+PROFILE ?= release
 PREFIX  ?= /usr/local
 LIBDIR  ?= $(PREFIX)/lib
 DESTDIR ?=
@@ -16,14 +15,13 @@ CFLAGS  ?= -O3
 FFLAGS  ?= -O3
 CARGO  ?= $(or $(shell command -v cargo),$(wildcard $(HOME)/.cargo/bin/cargo),cargo)
 export PATH := $(PATH):$(HOME)/.cargo/bin
-export BUILD MPICC MPIF90 STAGE
+export BUILD MPICC MPIF90
 
 VERSION := $(shell sed -n 's/^version = "\(.*\)"/\1/p' Cargo.toml | head -n 1)
 MAJOR   := $(firstword $(subst ., ,$(VERSION)))
-STAGE   := $(if $(filter quick,$(PROFILE)),$(BUILD),$(BUILD)/$(PROFILE))
-LIB     := $(STAGE)/lib
-HOST    := $(STAGE)/host
-PROGRAM := $(STAGE)/bin/limnograph
+LIB     := $(BUILD)/lib
+HOST    := $(BUILD)/host
+PROGRAM := $(BUILD)/bin/limnograph
 PYTHON  := $(BUILD)/python/bin/python
 ALONE   := $(BUILD)/alone/$(PROFILE)
 MPI     := $(BUILD)/mpi/$(PROFILE)
@@ -37,7 +35,7 @@ say = @printf '\n== %s\n'
 .DEFAULT_GOAL := help
 .DELETE_ON_ERROR:
 .SUFFIXES:
-.PHONY: help demo test bench run-bench install install-files libraries program hosts clean FORCE \
+.PHONY: help demo test bench install libraries program hosts clean FORCE \
 	prepare-base prepare-mpi prepare-hosts prepare-tests \
 	test-format test-lints test-rust test-mpi test-hosts test-python
 
@@ -175,9 +173,7 @@ $(PYTHON): tests/astropy/requirements.txt | prepare-tests
 	@$(PYTHON) -m pip install --quiet --disable-pip-version-check -r $<
 	@touch $@
 
-bench:
-	@+$(MAKE) --no-print-directory PROFILE=release run-bench
-run-bench: prepare-hosts libraries program hosts
+bench: prepare-hosts libraries program hosts
 	@bench/run.sh
 
 # --- Install ------------------------------------------------------------------------------------------
@@ -191,9 +187,7 @@ comma := ,
 # Programs find a library in an unusual place by themselves.
 RPATH := $(if $(filter /usr /usr/local,$(PREFIX)),,-Wl,-rpath,$${libdir})
 
-install:
-	@+$(MAKE) --no-print-directory PROFILE=release install-files
-install-files: libraries program
+install: libraries program
 	@install -d $(TO)/bin $(TO)/include $(TO_LIB)/pkgconfig $(TO)/share/doc/limnograph
 	@install -m 755 $(PROGRAM) $(TO)/bin/
 	@install -m 644 include/limnograph.h $(if $(MPI_IF_WANTED),include/limnograph_mpi.h) \

@@ -14,12 +14,11 @@
 set -uo pipefail
 
 export BUILD=${BUILD:-target}
-STAGE=${STAGE:-$BUILD}
-export HOSTS=$STAGE/host LIMNOGRAPH=$STAGE/bin/limnograph MPIRUN_SH=scripts/mpirun.sh
+export HOSTS=$BUILD/host LIMNOGRAPH=$BUILD/bin/limnograph MPIRUN_SH=scripts/mpirun.sh
 : "${CC:=cc}" "${MPICC:=mpicc}" "${MPIF90:=mpif90}"
 limit=300
 place=$BUILD/test/hosts
-lib=$(cd "$STAGE/lib" && pwd)
+lib=$(cd "$BUILD/lib" && pwd)
 passed=0 failed=0
 filters=("$@")
 rm -rf "$place"

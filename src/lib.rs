@@ -7,6 +7,8 @@
 //! (reductions over processes) → [`series`] (disk) → [`reader`]. Beside them stand [`units`], [`config`]
 //! and [`alarms`]. `DEVELOPERS.md` is the map.
 
+#![warn(clippy::unwrap_used, clippy::expect_used)]
+
 pub mod alarms;
 pub mod capi;
 pub mod config;
@@ -14,6 +16,7 @@ pub mod exact;
 pub mod gauges;
 pub mod lend;
 pub mod reader;
+pub mod run;
 pub mod series;
 pub mod sweep;
 pub mod team;

@@ -1,1 +1,15 @@
 //! Typed, strided, read-only views of host arrays.
+//!
+//! A host lends an array until its species is sounded or the step is entered; nothing is copied, kept or
+//! written. The rules of the room: every description is checked when it is lent, so that reading it later
+//! cannot fail; the only thing trusted is that the memory described is there (see [`View`]).
+
+mod fields;
+mod lot;
+mod nearest;
+mod view;
+
+pub use fields::{FIELDS, Field, FieldInfo, Quantity, SPECIES, Shape, Species};
+pub use lot::Lot;
+pub use nearest::nearest;
+pub use view::{ArrayShape, Lent, Scalar, View, ViewError};

@@ -2,9 +2,19 @@
 //! default floating-point control (a new thread inherits its creator's), and a name that debuggers show.
 
 use super::float::FloatGuard;
+use std::cell::Cell;
 use std::io;
 use std::marker::PhantomData;
 use std::thread::JoinHandle;
+
+thread_local! {
+    static OURS: Cell<bool> = const { Cell::new(false) };
+}
+
+/// Is the present thread one of ours? A panic in it is then not for the host's terminal.
+pub fn is_ours() -> bool {
+    OURS.try_with(Cell::get).unwrap_or(false)
+}
 
 /// Starts a thread that runs `body` with every signal blocked and default floating-point control.
 ///
@@ -19,6 +29,7 @@ pub fn spawn<T: Send + 'static>(
         .name(name.to_string())
         .spawn(move || {
             let _control = FloatGuard::enter();
+            OURS.set(true);
             body()
         });
     drop(blocked);

@@ -1,0 +1,301 @@
+//! One screen of where a run stands.
+
+use crate::format;
+use crate::gauges::{self, Section};
+use crate::items;
+use crate::open::Failure;
+use crate::screen::{Screen, harmless};
+use limnograph::reader::{SeriesReader, TableView, extent};
+use limnograph::series::now_milliseconds;
+use limnograph::series::record::Value;
+use limnograph::series::schema::Kind;
+use std::io::Write;
+
+/// Columns of the library's own that are told in words at the top.
+const CLOCK: &str = "clock";
+const LIBRARY: &str = "library";
+const REDSHIFT: &str = "redshift";
+const AGE: &str = "age";
+const LIBRARY_SECONDS: &str = "library_seconds";
+const HOST_SECONDS: &str = "host_seconds";
+/// A host that has not entered a row for this many of its usual intervals may have stopped.
+const QUIET_INTERVALS: u64 = 20;
+
+/// Writes the screen.
+pub fn show(reader: &SeriesReader, screen: &Screen, out: &mut dyn Write) -> Result<(), Failure> {
+    let Some(run) = reader.table("run") else {
+        return Err(Failure::Told(format!(
+            "{} has no run table that can be read; `limnograph audit` tells what is damaged",
+            reader.path().display()
+        )));
+    };
+    let head = head(reader, &run, screen);
+    let mut sections = Vec::new();
+    if run.rows() > 0 {
+        sections = gauges::sections(reader, &run, screen);
+        let tables = reader.tables();
+        let tables = tables
+            .iter()
+            .filter(|&&name| name != "run")
+            .filter_map(|name| reader.table(name));
+        for section in tables.filter_map(|table| items::section(&table, &run, screen)) {
+            // A gauge's own table stands with its columns of the run.
+            match sections
+                .iter_mut()
+                .find(|known| known.title == section.title)
+            {
+                Some(known) => {
+                    known.lines.extend(section.legend);
+                    known.lines.extend(section.lines);
+                }
+                None => sections.push(section),
+            }
+        }
+    }
+    let used = head.len();
+    for line in head {
+        writeln!(out, "{line}")?;
+    }
+    let room = screen.lines.map(|lines| lines.saturating_sub(used));
+    write_sections(&sections, room, screen, out)
+}
+
+fn head(reader: &SeriesReader, run: &TableView<'_>, screen: &Screen) -> Vec<String> {
+    let path = reader
+        .path()
+        .file_name()
+        .map_or_else(String::new, |name| name.to_string_lossy().into_owned());
+    let mut lines = vec![
+        screen.bold(&screen.ends(&format!(" {}", host_name(reader)), &harmless(&path))),
+        screen.faint(&"~".repeat(screen.width)),
+    ];
+    if run.rows() == 0 {
+        lines.push(" no row has been entered yet".to_string());
+    } else {
+        lines.push(screen.cut(&format!(" {}", clock(reader, run)), screen.width));
+    }
+    lines.push(screen.cut(&format!(" {}", standing(reader, run)), screen.width));
+    lines.extend(cost(run).map(|cost| screen.cut(&format!(" {cost}"), screen.width)));
+    lines.extend(
+        health(reader)
+            .into_iter()
+            .map(|line| screen.bold(&screen.cut(&format!(" {line}"), screen.width))),
+    );
+    lines.extend(notices(run).map(|line| screen.cut(&format!(" {line}"), screen.width)));
+    lines
+}
+
+fn host_name(reader: &SeriesReader) -> String {
+    let Some(host) = reader.host() else {
+        return "a host without a name".to_string();
+    };
+    let field = |name: &str| {
+        host.get(name)
+            .and_then(serde_json::Value::as_str)
+            .filter(|text| !text.is_empty())
+    };
+    let name = host
+        .as_str()
+        .or_else(|| field("name"))
+        .unwrap_or("a host without a name");
+    let mut text = name.to_string();
+    if let Some(version) = field("version") {
+        text.push_str(&format!(" {version}"));
+    }
+    if let Some(description) = field("description") {
+        text.push_str(&format!(", {description}"));
+    }
+    harmless(&text)
+}
+
+/// The host's clock in the latest row.
+fn clock(reader: &SeriesReader, run: &TableView<'_>) -> String {
+    let last = run.rows() - 1;
+    let mut parts = vec![format!("step {}", run.step(last).unwrap_or(0))];
+    let time = reader.time_column().unwrap_or("");
+    for name in [time, REDSHIFT, AGE] {
+        let found = run.columns().iter().position(|merged| {
+            merged.column.name == name && (merged.column.gauge == CLOCK || name == time)
+        });
+        let Some(index) = found else { continue };
+        let column = &run.columns()[index].column;
+        let value = run.column_rows(index, last..last + 1).value(0);
+        if value != Value::Null {
+            let number = format::with_unit(&format::value(&value, column.kind), &column.unit);
+            parts.push(format!("{} {number}", column.name));
+        }
+    }
+    parts.join("   ")
+}
+
+/// How many rows and legs, and whether the host still writes.
+fn standing(reader: &SeriesReader, run: &TableView<'_>) -> String {
+    let legs = reader.legs();
+    let rows = format::count(run.rows(), "row");
+    let mut text = if legs.len() > 1 {
+        format!("{rows} in {} legs", legs.len())
+    } else {
+        rows
+    };
+    let is_closed = legs.last().is_some_and(|leg| leg.end.is_some());
+    let entered = run.rows().checked_sub(1).and_then(|last| run.entered(last));
+    if let Some(entered) = entered {
+        let now = now_milliseconds();
+        let since = now.saturating_sub(entered);
+        text.push_str(&format!(", the last {} ago", format::age(since)));
+        if !is_closed && since > quiet_time(run) {
+            text.push_str("; the host has not closed it, but seems to have stopped");
+            return text;
+        }
+    }
+    text.push_str(if is_closed {
+        "; closed by the host"
+    } else {
+        "; the host is running"
+    });
+    text
+}
+
+/// A silence after which a host that writes has probably stopped: many of its usual intervals, at least a minute.
+fn quiet_time(run: &TableView<'_>) -> u64 {
+    let last = run.rows().saturating_sub(1);
+    let recent = last.saturating_sub(50);
+    let interval = match (run.entered(recent), run.entered(last)) {
+        (Some(from), Some(to)) if last > recent => to.saturating_sub(from) / (last - recent) as u64,
+        _ => 60_000,
+    };
+    (interval * QUIET_INTERVALS).max(60_000)
+}
+
+/// What the library costs the host, over the latest leg.
+fn cost(run: &TableView<'_>) -> Option<String> {
+    let (library, host) = (run.column(LIBRARY_SECONDS)?, run.column(HOST_SECONDS)?);
+    let leg = run.leg(run.rows().checked_sub(1)?);
+    let (mut spent, mut total, mut steps) = (0.0, 0.0, 0);
+    for row in (0..run.rows()).filter(|&row| run.leg(row) == leg) {
+        if let (Some(inside), Some(all)) = (library.number(row), host.number(row)) {
+            spent += inside;
+            total += all;
+            steps += 1;
+        }
+    }
+    if steps == 0 || !(total > 0.0 && spent.is_finite() && total.is_finite()) {
+        return None;
+    }
+    Some(format!(
+        "the library takes {} of the host's time: {} of {} a row",
+        format::percent(spent / total),
+        format::seconds(spent / f64::from(steps)),
+        format::seconds(total / f64::from(steps))
+    ))
+}
+
+/// Damage and gaps; nothing when the series is whole.
+fn health(reader: &SeriesReader) -> Vec<String> {
+    let mut lines = Vec::new();
+    let damage = reader.damage();
+    if !damage.is_empty() {
+        let path = reader.path().display();
+        lines.push(format!(
+            "the series is damaged {}: limnograph audit {path}",
+            extent(&damage)
+        ));
+    }
+    let missing: u64 = reader
+        .gaps()
+        .iter()
+        .map(|gap| gap.records)
+        .fold(0, u64::saturating_add);
+    if let Some(gap) = reader.gaps().last() {
+        lines.push(format!(
+            "{missing} rows are missing: {}",
+            harmless(&gap.reason)
+        ));
+    }
+    lines
+}
+
+/// What the library counts of its own accord is worth a line when it is not zero.
+fn notices(run: &TableView<'_>) -> impl Iterator<Item = String> {
+    let counts = run.columns().iter().enumerate().filter(|(_, merged)| {
+        merged.column.gauge == LIBRARY && merged.column.kind == Kind::Increment
+    });
+    counts.filter_map(|(index, merged)| {
+        let values = run.column_rows(index, 0..run.rows());
+        let total: f64 = (0..values.len()).filter_map(|row| values.number(row)).sum();
+        let text = format!(
+            "{}: {} ({})",
+            merged.column.name,
+            format::number(total),
+            merged.column.description
+        );
+        (total > 0.0).then(|| harmless(&text))
+    })
+}
+
+/// Writes what fits into `room` lines: a line of each section in turn until there is no room.
+fn write_sections(
+    sections: &[Section],
+    room: Option<usize>,
+    screen: &Screen,
+    out: &mut dyn Write,
+) -> Result<(), Failure> {
+    let shown = share(sections, room);
+    let needed: usize = sections
+        .iter()
+        .zip(&shown)
+        .map(|(section, &lines)| 1 + lines + section.legend.len())
+        .sum();
+    let has_air = room.is_none_or(|room| needed + sections.len() <= room);
+    for (section, &lines) in sections.iter().zip(&shown) {
+        if has_air {
+            writeln!(out)?;
+        }
+        let left_out = section.lines.len() - lines;
+        if left_out > 0 {
+            writeln!(
+                out,
+                "{} {}",
+                section.title,
+                screen.faint(&format!("({left_out} more with --all)"))
+            )?;
+        } else {
+            writeln!(out, "{}", section.title)?;
+        }
+        for line in section
+            .legend
+            .iter()
+            .filter(|_| lines > 0)
+            .chain(&section.lines[..lines])
+        {
+            writeln!(out, "{line}")?;
+        }
+    }
+    Ok(())
+}
+
+/// How many lines each section gets.
+fn share(sections: &[Section], room: Option<usize>) -> Vec<usize> {
+    let Some(room) = room else {
+        return sections.iter().map(|section| section.lines.len()).collect();
+    };
+    let mut left = room.saturating_sub(sections.len());
+    let mut shown = vec![0; sections.len()];
+    loop {
+        let before = left;
+        for (section, lines) in sections.iter().zip(&mut shown) {
+            let price = if *lines == 0 {
+                1 + section.legend.len()
+            } else {
+                1
+            };
+            if *lines < section.lines.len() && price <= left {
+                *lines += 1;
+                left -= price;
+            }
+        }
+        if left == before {
+            return shown;
+        }
+    }
+}

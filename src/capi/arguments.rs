@@ -1,0 +1,344 @@
+//! From pointers of the host to checked values. Every function here follows host pointers, after checking what
+//! can be checked: null, alignment, size.
+
+use super::functions::{Description, LIMNO_VERSION, scalar_of};
+use super::types::{Array, Clock, Options, Standing, Tally};
+use crate::gauges::TallyBatch;
+use crate::lend::ArrayShape;
+use crate::run::{self, ConfigSource, Fault, Request, Status};
+use std::ffi::{CStr, c_char};
+
+/// Longest text of a host that is read.
+const LONGEST_TEXT: usize = 1 << 20;
+/// Most components a field can have.
+const MOST_COMPONENTS: u32 = 4096;
+
+fn bad<T>(text: String) -> Result<T, Fault> {
+    Fault::err(Status::BadArgument, text)
+}
+
+/// Reads a text; none where the pointer is null.
+///
+/// # Safety
+/// `pointer` is null or leads to a text with an end.
+pub(super) unsafe fn text(name: &str, pointer: *const c_char) -> Result<Option<String>, Fault> {
+    if pointer.is_null() {
+        return Ok(None);
+    }
+    // SAFETY: not null; that it has an end is the caller's duty.
+    let bytes = unsafe { CStr::from_ptr(pointer) }.to_bytes();
+    if bytes.len() > LONGEST_TEXT {
+        return bad(format!(
+            "`{name}` is longer than a megabyte; is its end missing?"
+        ));
+    }
+    match std::str::from_utf8(bytes) {
+        Ok(text) => Ok(Some(text.to_string())),
+        Err(_) => bad(format!("`{name}` is not UTF-8 text")),
+    }
+}
+
+/// Copies a struct that begins with its size: a host's shorter one is filled up with zeros, a longer one of a
+/// newer header is refused only if what is unknown to us is not zero.
+///
+/// # Safety
+/// `pointer` is null or leads to as many bytes as its first member says. `T` is plain data for which zero is
+/// valid.
+unsafe fn sized<T: Copy>(
+    name: &str,
+    initial: &str,
+    least: usize,
+    pointer: *const T,
+) -> Result<T, Fault> {
+    if pointer.is_null() {
+        return bad(format!("`{name}` is null"));
+    }
+    if !pointer.is_aligned() {
+        return bad(format!(
+            "`{name}` at {pointer:?} is misaligned; give the address of a {initial}"
+        ));
+    }
+    // SAFETY: not null and aligned; every such struct begins with a size_t.
+    let size = unsafe { pointer.cast::<usize>().read() };
+    if size < least || size > 4096 {
+        return bad(format!(
+            "`{name}` says its size is {size}, expected {}; set its first member to sizeof({initial}) or start from its \
+             _INIT macro",
+            size_of::<T>()
+        ));
+    }
+    let mut value = std::mem::MaybeUninit::<T>::zeroed();
+    // SAFETY: the struct is at least as long as its size says, by the caller's duty; the copy stays within both.
+    unsafe {
+        std::ptr::copy_nonoverlapping(
+            pointer.cast::<u8>(),
+            value.as_mut_ptr().cast::<u8>(),
+            size.min(size_of::<T>()),
+        );
+    }
+    for offset in size_of::<T>()..size {
+        // SAFETY: within the size that the struct states.
+        if unsafe { pointer.cast::<u8>().add(offset).read() } != 0 {
+            return bad(format!(
+                "`{name}` says more than this library understands (its byte {offset} is set); link the library that \
+                 belongs to the header"
+            ));
+        }
+    }
+    // SAFETY: plain data, every byte of which is initialised.
+    Ok(unsafe { value.assume_init() })
+}
+
+/// Reads what a host says when it opens a run. What is wrong with it becomes part of the request, since the
+/// other ranks must hear of it.
+///
+/// # Safety
+/// Every pointer is null or valid.
+pub(super) unsafe fn options_of(
+    version: u32,
+    config: *const c_char,
+    series: *const c_char,
+    options: *const Options,
+) -> Request {
+    let mut request = Request {
+        config: ConfigSource {
+            path: String::new(),
+            text: None,
+        },
+        series: String::new(),
+        host_name: String::new(),
+        host_version: String::new(),
+        description: String::new(),
+        threads: 0,
+        fault: None,
+        is_complete: false,
+    };
+    // SAFETY: passed on.
+    if let Err(fault) = unsafe { fill(&mut request, version, config, series, options) } {
+        request.fault = Some(fault);
+    }
+    request
+}
+
+/// # Safety
+/// As [`options_of`].
+unsafe fn fill(
+    request: &mut Request,
+    version: u32,
+    config: *const c_char,
+    series: *const c_char,
+    options: *const Options,
+) -> Result<(), Fault> {
+    // Before 1.0 every minor version may change the interface.
+    if version / 100 != LIMNO_VERSION / 100 {
+        return Fault::err(
+            Status::BadVersion,
+            format!(
+                "the host was built with the header of version {}, this library is {}; rebuild the host with the header \
+                 that belongs to the library, and pass LIMNO_VERSION",
+                version_text(version),
+                version_text(LIMNO_VERSION)
+            ),
+        );
+    }
+    if !options.is_null() {
+        // SAFETY: passed on.
+        let options = unsafe { sized("options", "limno_options", size_of::<usize>(), options) }?;
+        // SAFETY: passed on, for each text.
+        unsafe {
+            request.host_name = text("host_name", options.host_name)?.unwrap_or_default();
+            request.host_version = text("host_version", options.host_version)?.unwrap_or_default();
+            request.description = text("description", options.description)?.unwrap_or_default();
+            request.config.text = text("config_text", options.config_text)?;
+        }
+        request.threads = match usize::try_from(options.threads) {
+            Ok(threads) if threads <= 1024 => threads,
+            _ => {
+                return bad(format!(
+                    "`threads` is {}; expected 0 (as the config says) to 1024",
+                    options.threads
+                ));
+            }
+        };
+    }
+    // SAFETY: passed on.
+    let (config, series) = unsafe { (text("config", config)?, text("series", series)?) };
+    request.is_complete = (config.is_some() || request.config.text.is_some()) && series.is_some();
+    request.config.path = config.unwrap_or_else(|| "limnograph.toml".to_string());
+    request.series = series.unwrap_or_default();
+    Ok(())
+}
+
+fn version_text(version: u32) -> String {
+    format!(
+        "{}.{}.{}",
+        version / 10000,
+        version / 100 % 100,
+        version % 100
+    )
+}
+
+/// # Safety
+/// `clock` is null or valid.
+pub(super) unsafe fn checked_clock(clock: *const Clock) -> Result<run::Clock, Fault> {
+    // SAFETY: passed on.
+    let clock = unsafe { sized("clock", "limno_clock", 24, clock) }?;
+    for (name, flag) in [
+        ("synchronised", clock.synchronised),
+        ("checkpoint", clock.checkpoint),
+    ] {
+        if flag != 0 && flag != 1 {
+            return Fault::err(
+                Status::BadClock,
+                format!(
+                    "clock of step {}: `{name}` is {flag}; expected 0 or 1",
+                    clock.step
+                ),
+            );
+        }
+    }
+    Ok(run::Clock {
+        step: clock.step,
+        time: clock.time,
+        step_length: clock.step_length,
+        synchronised: clock.synchronised == 1,
+        checkpoint: clock.checkpoint == 1,
+    })
+}
+
+/// # Safety
+/// `array` is null or valid, and so is its list of arrays.
+pub(super) unsafe fn checked_array(array: *const Array) -> Result<Description, Fault> {
+    // SAFETY: passed on.
+    let array = unsafe { sized("array", "limno_array", size_of::<Array>(), array) }?;
+    let scalar = scalar_of(array.scalar)?;
+    if array.components == 0 || array.components > MOST_COMPONENTS {
+        return bad(format!(
+            "{} components; expected 1, 3, or as many as the config names elements",
+            array.components
+        ));
+    }
+    let components = array.components as usize;
+    let component_stride = if array.component_stride == 0 {
+        scalar.bytes() as isize
+    } else {
+        array.component_stride
+    };
+    let arrays = if array.arrays.is_null() {
+        None
+    } else if !array.arrays.is_aligned() {
+        return bad("`arrays` is misaligned; give the address of an array of pointers".to_string());
+    } else {
+        // SAFETY: not null and aligned; that it holds one pointer per component is the caller's duty.
+        Some(
+            (0..components)
+                .map(|index| unsafe { *array.arrays.add(index) } as usize)
+                .collect(),
+        )
+    };
+    let shape = ArrayShape {
+        scalar,
+        components,
+        stride: array.stride,
+        component_stride,
+    };
+    Ok(Description {
+        shape,
+        data: array.data as usize,
+        arrays,
+    })
+}
+
+/// # Safety
+/// `batch` is null or valid, with as many numbers behind each pointer as the header says.
+pub(super) unsafe fn checked_tally<'a>(
+    batch: *const Tally,
+    elements: usize,
+) -> Result<(String, TallyBatch<'a>), Fault> {
+    // SAFETY: passed on.
+    let batch = unsafe { sized("batch", "limno_tally_batch", 24, batch) }?;
+    // SAFETY: passed on.
+    let channel = unsafe { text("channel", batch.channel) }?;
+    let Some(channel) = channel else {
+        return bad("`channel` is null; name a channel, such as \"wind\"".to_string());
+    };
+    let named =
+        |name: &str, pointer: *const f64, each: usize| -> Result<Option<&'a [f64]>, Fault> {
+            if pointer.is_null() || batch.count == 0 {
+                return Ok(None);
+            }
+            if !pointer.is_aligned() {
+                return bad(format!(
+                    "tally on channel {channel}: `{name}` at {pointer:?} is misaligned for doubles"
+                ));
+            }
+            let length = batch
+                .count
+                .checked_mul(each)
+                .filter(|&length| length <= isize::MAX as usize / 8);
+            let Some(length) = length else {
+                return bad(format!(
+                    "tally on channel {channel}: {} events exceed the address space",
+                    batch.count
+                ));
+            };
+            // SAFETY: not null, aligned, and of a length that fits; that the numbers are there is the caller's duty.
+            Ok(Some(unsafe { std::slice::from_raw_parts(pointer, length) }))
+        };
+    if !batch.elements.is_null() && elements == 0 {
+        return bad(format!(
+            "tally on channel {channel}: `elements` is given, but the config names none under [elements]"
+        ));
+    }
+    let checked = TallyBatch {
+        count: batch.count,
+        mass: named("mass", batch.mass, 1)?,
+        momentum: named("momentum", batch.momentum, 1)?,
+        energy: named("energy", batch.energy, 1)?,
+        metals: named("metals", batch.metals, 1)?,
+        elements: named("elements", batch.elements, elements)?,
+        position: named("position", batch.position, 3)?,
+    };
+    Ok((channel, checked))
+}
+
+/// Writes an answer where the host wants it.
+///
+/// # Safety
+/// `place` is null or valid.
+pub(super) unsafe fn write_out(name: &str, place: *mut i32, value: i32) -> Result<(), Fault> {
+    if place.is_null() || !place.is_aligned() {
+        return bad(format!(
+            "`{name}` is null or misaligned; give the address of an int32_t"
+        ));
+    }
+    // SAFETY: not null and aligned; that it is valid is the caller's duty.
+    unsafe { place.write(value) };
+    Ok(())
+}
+
+/// Writes as much of an answer as the host's struct holds.
+///
+/// # Safety
+/// `place` is null or leads to as many bytes as its first member says.
+pub(super) unsafe fn write_standing(
+    place: *mut Standing,
+    mut answer: Standing,
+) -> Result<(), Fault> {
+    // SAFETY: passed on.
+    let given = unsafe {
+        sized(
+            "standing",
+            "limno_standing",
+            size_of::<usize>(),
+            place.cast_const(),
+        )
+    }?;
+    answer.size = given.size;
+    let bytes = given.size.min(size_of::<Standing>());
+    // SAFETY: `sized` has checked the place; the copy stays within the size that it states.
+    unsafe {
+        std::ptr::copy_nonoverlapping((&raw const answer).cast::<u8>(), place.cast::<u8>(), bytes)
+    };
+    Ok(())
+}

@@ -1,0 +1,162 @@
+//! What the gauges of a run declare: fields they need, columns they own, cells they reduce.
+
+use crate::lend::{Field, Species};
+use crate::series::schema::{Column, Kind, Table, ValueType};
+
+/// A field that a gauge reads of a species.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub struct Need {
+    /// Of which species.
+    pub species: Species,
+    /// Which array.
+    pub field: Field,
+    /// Can the gauge do without it?
+    pub optional: bool,
+}
+
+/// Exact sums of one gauge.
+#[derive(Clone, Copy, Debug)]
+pub struct Sums {
+    pub(super) first: usize,
+    pub(super) length: usize,
+}
+
+/// Counts of one gauge.
+#[derive(Clone, Copy, Debug)]
+pub struct Counts {
+    pub(super) first: usize,
+    pub(super) length: usize,
+}
+
+/// A list of largest items of one gauge.
+#[derive(Clone, Copy, Debug)]
+pub struct Top(pub(super) usize);
+
+/// A table of one gauge; its number in the schema.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub struct TableHandle(pub u32);
+
+/// Length of a list of largest items.
+#[derive(Clone, Copy, Debug)]
+pub(crate) struct TopShape {
+    pub words: usize,
+    pub items: usize,
+}
+
+/// Collects the declarations of all gauges.
+#[derive(Debug)]
+pub struct Plan {
+    /// Tables so far; the run's own first.
+    pub tables: Vec<Table>,
+    /// Needs of each gauge, in the order of the gauges.
+    pub needs: Vec<Vec<Need>>,
+    /// Columns of the run table that each gauge owns: first and number.
+    pub(crate) columns: Vec<(usize, usize)>,
+    pub(crate) sums: usize,
+    pub(crate) counts: usize,
+    pub(crate) tops: Vec<TopShape>,
+    gauge: String,
+}
+
+impl Plan {
+    /// A plan with the library's own tables, the run's first.
+    pub fn new(tables: Vec<Table>) -> Plan {
+        Plan {
+            tables,
+            needs: Vec::new(),
+            columns: Vec::new(),
+            sums: 0,
+            counts: 0,
+            tops: Vec::new(),
+            gauge: String::new(),
+        }
+    }
+
+    /// What is declared from now on belongs to this gauge.
+    pub(super) fn begin(&mut self, gauge: &str) {
+        self.gauge = gauge.to_string();
+        self.needs.push(Vec::new());
+        self.columns.push((self.tables[0].columns.len(), 0));
+    }
+
+    /// The gauge reads this field; without it the gauge has nothing to say about the species.
+    pub fn need(&mut self, species: Species, field: Field) {
+        self.add_need(Need {
+            species,
+            field,
+            optional: false,
+        });
+    }
+
+    /// The gauge reads this field where it is lent.
+    pub fn may_use(&mut self, species: Species, field: Field) {
+        self.add_need(Need {
+            species,
+            field,
+            optional: true,
+        });
+    }
+
+    fn add_need(&mut self, need: Need) {
+        if let Some(needs) = self.needs.last_mut() {
+            needs.push(need);
+        }
+    }
+
+    /// The gauge owns a float column of the run table.
+    pub fn column(
+        &mut self,
+        name: impl Into<String>,
+        unit: &str,
+        kind: Kind,
+        description: impl Into<String>,
+    ) {
+        self.typed_column(name, unit, kind, ValueType::Float, description);
+    }
+
+    /// The gauge owns a column of the run table.
+    pub fn typed_column(
+        &mut self,
+        name: impl Into<String>,
+        unit: &str,
+        kind: Kind,
+        value: ValueType,
+        description: impl Into<String>,
+    ) {
+        let column = Column::new(&self.gauge, name, unit, kind, value, description);
+        self.tables[0].columns.push(column);
+        if let Some((_, number)) = self.columns.last_mut() {
+            *number += 1;
+        }
+    }
+
+    /// The gauge owns a table.
+    pub fn table(&mut self, name: &str, description: &str, columns: Vec<Column>) -> TableHandle {
+        self.tables.push(Table {
+            name: name.to_string(),
+            description: description.to_string(),
+            columns,
+        });
+        TableHandle(self.tables.len() as u32 - 1)
+    }
+
+    /// The gauge sums `length` quantities exactly.
+    pub fn sums(&mut self, length: usize) -> Sums {
+        let first = self.sums;
+        self.sums += length;
+        Sums { first, length }
+    }
+
+    /// The gauge counts `length` things.
+    pub fn counts(&mut self, length: usize) -> Counts {
+        let first = self.counts;
+        self.counts += length;
+        Counts { first, length }
+    }
+
+    /// The gauge keeps the `items` largest items of `words` integers each, compared from the first on.
+    pub fn top(&mut self, items: usize, words: usize) -> Top {
+        self.tops.push(TopShape { words, items });
+        Top(self.tops.len() - 1)
+    }
+}

@@ -1,0 +1,497 @@
+//! One lent array: how its numbers lie in the host's memory, checked, and read block by block.
+
+use std::fmt;
+
+/// The type of the host's numbers.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Scalar {
+    /// IEEE 754 binary32.
+    F32,
+    /// IEEE 754 binary64.
+    F64,
+    /// Signed 32-bit integer.
+    I32,
+    /// Unsigned 32-bit integer.
+    U32,
+    /// Signed 64-bit integer.
+    I64,
+    /// Unsigned 64-bit integer.
+    U64,
+}
+
+impl Scalar {
+    /// Bytes of one number; also its alignment.
+    pub fn bytes(self) -> usize {
+        match self {
+            Scalar::F32 | Scalar::I32 | Scalar::U32 => 4,
+            Scalar::F64 | Scalar::I64 | Scalar::U64 => 8,
+        }
+    }
+
+    /// Is it an integer type?
+    pub fn is_integer(self) -> bool {
+        !matches!(self, Scalar::F32 | Scalar::F64)
+    }
+}
+
+/// How the elements of an array follow each other; the same from step to step while pointers change.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub struct ArrayShape {
+    /// Type of the numbers.
+    pub scalar: Scalar,
+    /// Numbers an element has.
+    pub components: usize,
+    /// Bytes from an element to the next; 0: one value for all.
+    pub stride: isize,
+    /// Bytes from a component to the next; unused where components are arrays of their own.
+    pub component_stride: isize,
+}
+
+/// Strides beyond this are taken for a mistake: no host has elements of a megabyte.
+const LARGEST_STRIDE: isize = 1 << 20;
+
+/// A lent array, checked.
+///
+/// # What is trusted
+/// That `count` elements as described stay readable and unchanged until the view is let go. Nothing in the
+/// arguments can show that it is so; it is the host's duty, stated in the header.
+#[derive(Clone, Debug)]
+pub struct View {
+    shape: ArrayShape,
+    count: usize,
+    /// Address of the first element's number, for each component. Kept as addresses: a view is only turned
+    /// into a pointer where it is read.
+    bases: Bases,
+}
+
+#[derive(Clone, Debug)]
+enum Bases {
+    /// Components follow the first at the component stride.
+    Interleaved(usize),
+    /// Up to three arrays of their own, without a heap.
+    Three([usize; 3]),
+    /// Any number of arrays of their own.
+    Many(Vec<usize>),
+}
+
+/// Where the host says its numbers are.
+#[derive(Clone, Copy, Debug)]
+pub enum Lent<'a> {
+    /// One address; components follow at the component stride.
+    Interleaved(usize),
+    /// One address a component.
+    Arrays(&'a [usize]),
+}
+
+/// What is wrong with a description, in words that complete "gas velocity: …".
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct ViewError(pub String);
+
+impl fmt::Display for ViewError {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.write_str(&self.0)
+    }
+}
+
+fn wrong<T>(message: String) -> Result<T, ViewError> {
+    Err(ViewError(message))
+}
+
+impl ArrayShape {
+    /// Checks all that can be checked without an address.
+    ///
+    /// # Errors
+    /// A stride that is not a multiple of the number's size, that lets elements overlap, or that is absurd.
+    pub fn check(&self, separate_arrays: bool) -> Result<(), ViewError> {
+        let size = self.scalar.bytes() as isize;
+        let spans = if separate_arrays || self.components == 1 {
+            size
+        } else {
+            let step = self.component_stride;
+            if step % size != 0 || step == 0 || step.unsigned_abs() > LARGEST_STRIDE.unsigned_abs()
+            {
+                return wrong(format!(
+                    "a component stride of {step} bytes cannot hold {size}-byte numbers; give a multiple of {size}, \
+                     for packed components {size}"
+                ));
+            }
+            size
+        };
+        let stride = self.stride;
+        if stride % size != 0 {
+            return wrong(format!(
+                "a stride of {stride} bytes is not a multiple of the {size} bytes of one number; \
+                 give sizeof the element (0 for one value shared by all)"
+            ));
+        }
+        if stride.unsigned_abs() > LARGEST_STRIDE.unsigned_abs() {
+            return wrong(format!(
+                "a stride of {stride} bytes is more than {LARGEST_STRIDE}; strides are in bytes from one element \
+                 to the next"
+            ));
+        }
+        if stride != 0 && stride.abs() < spans {
+            return wrong(format!(
+                "a stride of {stride} bytes lets elements of {spans} bytes overlap"
+            ));
+        }
+        let interleaved = !separate_arrays && self.components > 1;
+        if interleaved && stride != 0 {
+            let run = self.component_stride.abs() * self.components as isize;
+            let packed_element = stride.abs() >= run;
+            // Components may also be planes of one array: then elements follow closely and planes are far apart.
+            let planes = self.component_stride.abs() > stride.abs();
+            if !packed_element && !planes {
+                return wrong(format!(
+                    "a stride of {stride} bytes is shorter than {} components at {} bytes each; give the bytes from \
+                     one element's first component to the next element's",
+                    self.components, self.component_stride
+                ));
+            }
+        }
+        Ok(())
+    }
+}
+
+impl View {
+    /// Checks a description and makes a view of it.
+    ///
+    /// # Errors
+    /// A null or misaligned address, a shape that [`ArrayShape::check`] refuses, or a range that leaves the
+    /// address space.
+    pub fn new(shape: ArrayShape, count: usize, lent: Lent) -> Result<View, ViewError> {
+        shape.check(matches!(lent, Lent::Arrays(_)))?;
+        let bases = match lent {
+            Lent::Interleaved(address) => {
+                check_range(shape, count, address, shape.components)?;
+                Bases::Interleaved(address)
+            }
+            Lent::Arrays(addresses) => {
+                if addresses.len() != shape.components {
+                    return wrong(format!(
+                        "{} arrays are given where {} components are expected",
+                        addresses.len(),
+                        shape.components
+                    ));
+                }
+                for &address in addresses {
+                    check_range(shape, count, address, 1)?;
+                }
+                match *addresses {
+                    [x, y, z] => Bases::Three([x, y, z]),
+                    _ => Bases::Many(addresses.to_vec()),
+                }
+            }
+        };
+        Ok(View {
+            shape,
+            count,
+            bases,
+        })
+    }
+
+    /// Number of elements.
+    pub fn count(&self) -> usize {
+        self.count
+    }
+
+    /// Numbers an element has.
+    pub fn components(&self) -> usize {
+        self.shape.components
+    }
+
+    /// Type of the numbers.
+    pub fn scalar(&self) -> Scalar {
+        self.shape.scalar
+    }
+
+    fn base(&self, component: usize) -> usize {
+        match &self.bases {
+            Bases::Interleaved(address) => address
+                .wrapping_add_signed(self.shape.component_stride.wrapping_mul(component as isize)),
+            Bases::Three(addresses) => addresses[component],
+            Bases::Many(addresses) => addresses[component],
+        }
+    }
+
+    /// Reads `into.len()` numbers of one component, from element `start` on, as doubles.
+    ///
+    /// # Panics
+    /// When the range is outside the view: a mistake of ours, not of a host.
+    pub fn read(&self, component: usize, start: usize, into: &mut [f64]) {
+        self.check_block(component, start, into.len());
+        let base = self.base(component);
+        let stride = self.shape.stride;
+        match self.shape.scalar {
+            Scalar::F32 => gather::<f32, f64>(base, stride, start, into, f64::from),
+            Scalar::F64 => gather::<f64, f64>(base, stride, start, into, |x| x),
+            Scalar::I32 => gather::<i32, f64>(base, stride, start, into, f64::from),
+            Scalar::U32 => gather::<u32, f64>(base, stride, start, into, f64::from),
+            Scalar::I64 => gather::<i64, f64>(base, stride, start, into, |x| x as f64),
+            Scalar::U64 => gather::<u64, f64>(base, stride, start, into, |x| x as f64),
+        }
+    }
+
+    /// Reads identities as 64-bit patterns (32-bit ones are extended; negative ones keep their two's
+    /// complement).
+    ///
+    /// # Panics
+    /// As [`View::read`]; also for floating-point numbers, which are refused when lent.
+    pub fn read_identities(&self, start: usize, into: &mut [u64]) {
+        self.check_block(0, start, into.len());
+        let base = self.base(0);
+        let stride = self.shape.stride;
+        match self.shape.scalar {
+            Scalar::I32 => gather::<i32, u64>(base, stride, start, into, |x| i64::from(x) as u64),
+            Scalar::U32 => gather::<u32, u64>(base, stride, start, into, u64::from),
+            Scalar::I64 => gather::<i64, u64>(base, stride, start, into, |x| x as u64),
+            Scalar::U64 => gather::<u64, u64>(base, stride, start, into, |x| x),
+            Scalar::F32 | Scalar::F64 => {
+                unreachable!("identities of floating-point type are refused when lent")
+            }
+        }
+    }
+
+    fn check_block(&self, component: usize, start: usize, length: usize) {
+        assert!(
+            component < self.shape.components
+                && start
+                    .checked_add(length)
+                    .is_some_and(|end| end <= self.count)
+        );
+    }
+}
+
+/// Is the memory from the first to the last number a proper, aligned range?
+fn check_range(
+    shape: ArrayShape,
+    count: usize,
+    address: usize,
+    components: usize,
+) -> Result<(), ViewError> {
+    if count == 0 {
+        return Ok(());
+    }
+    let size = shape.scalar.bytes();
+    if address == 0 {
+        return wrong(format!(
+            "the pointer is null, though {count} elements are lent"
+        ));
+    }
+    if !address.is_multiple_of(size) {
+        return wrong(format!(
+            "the address {address:#x} is not aligned to the {size} bytes of one number; packed structs cannot be \
+             lent, nor can a pointer of another type"
+        ));
+    }
+    let elements = isize::try_from(count - 1)
+        .ok()
+        .and_then(|last| shape.stride.checked_mul(last));
+    let parts = shape.component_stride.checked_mul(components as isize - 1);
+    let (Some(elements), Some(parts)) = (elements, if components > 1 { parts } else { Some(0) })
+    else {
+        return wrong(format!(
+            "{count} elements at a stride of {} bytes exceed the address space",
+            shape.stride
+        ));
+    };
+    let reach = |offset: isize| {
+        address
+            .checked_add_signed(offset)
+            .filter(|&end| isize::try_from(end).is_ok() && end > 0)
+    };
+    let corners = [
+        Some(0),
+        Some(elements),
+        Some(parts),
+        elements.checked_add(parts),
+    ];
+    if corners
+        .iter()
+        .any(|&offset| offset.and_then(reach).is_none())
+    {
+        return wrong(format!(
+            "{count} elements at a stride of {} bytes from {address:#x} exceed the address space",
+            shape.stride
+        ));
+    }
+    Ok(())
+}
+
+/// Reads numbers of type `T` at a stride and converts them; unit stride and constants have loops of their own.
+fn gather<T: Copy, U: Copy>(
+    base: usize,
+    stride: isize,
+    start: usize,
+    into: &mut [U],
+    convert: impl Fn(T) -> U,
+) {
+    let size = size_of::<T>() as isize;
+    if into.is_empty() {
+        return;
+    }
+    let first = (base as *const T).wrapping_byte_offset(stride.wrapping_mul(start as isize));
+    if stride == size {
+        // SAFETY: `View::new` checked that the elements lie in one aligned range of the address space that
+        // does not wrap, `check_block` that this block is inside it; that the host keeps the memory readable
+        // and unchanged is the duty the header states.
+        let numbers = unsafe { std::slice::from_raw_parts(first, into.len()) };
+        for (to, from) in into.iter_mut().zip(numbers) {
+            *to = convert(*from);
+        }
+    } else if stride == 0 {
+        // SAFETY: as above, for one number.
+        into.fill(convert(unsafe { first.read() }));
+    } else {
+        let mut at = first;
+        for to in into {
+            // SAFETY: as above, for this number; stride and base are multiples of its size, so it is aligned.
+            *to = convert(unsafe { at.read() });
+            at = at.wrapping_byte_offset(stride);
+        }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    fn packed(scalar: Scalar, components: usize) -> ArrayShape {
+        let size = scalar.bytes() as isize;
+        ArrayShape {
+            scalar,
+            components,
+            stride: size * components as isize,
+            component_stride: size,
+        }
+    }
+
+    #[test]
+    fn every_layout_reads_the_same_numbers() {
+        let interleaved: Vec<f32> = (0..30u8).map(f32::from).collect();
+        let arrays: Vec<Vec<f32>> = (0..3)
+            .map(|c| interleaved.iter().skip(c).step_by(3).copied().collect())
+            .collect();
+        let planes: Vec<f32> = arrays.concat();
+        let addresses: Vec<usize> = arrays.iter().map(|array| array.as_ptr() as usize).collect();
+        let one = |shape, lent| View::new(shape, 10, lent).unwrap();
+        let shape = packed(Scalar::F32, 3);
+        let views = [
+            one(shape, Lent::Interleaved(interleaved.as_ptr() as usize)),
+            one(ArrayShape { stride: 4, ..shape }, Lent::Arrays(&addresses)),
+            one(
+                ArrayShape {
+                    stride: 4,
+                    component_stride: 40,
+                    ..shape
+                },
+                Lent::Interleaved(planes.as_ptr() as usize),
+            ),
+        ];
+        for view in &views {
+            for component in 0..3 {
+                let mut read = [0.0; 7];
+                view.read(component, 2, &mut read);
+                let expected: Vec<f64> = (2..9).map(|i| (3 * i + component) as f64).collect();
+                assert_eq!(read.as_slice(), expected);
+            }
+        }
+        let backwards = ArrayShape {
+            stride: -12,
+            ..shape
+        };
+        let last = &raw const interleaved[27] as usize;
+        let mut read = [0.0; 10];
+        one(backwards, Lent::Interleaved(last)).read(1, 0, &mut read);
+        assert_eq!(
+            read,
+            [28.0, 25.0, 22.0, 19.0, 16.0, 13.0, 10.0, 7.0, 4.0, 1.0]
+        );
+    }
+
+    #[test]
+    fn a_stride_of_zero_is_one_value_for_all() {
+        let mass = 2.5f64;
+        let shape = ArrayShape {
+            stride: 0,
+            ..packed(Scalar::F64, 1)
+        };
+        let view = View::new(shape, 1 << 40, Lent::Interleaved(&raw const mass as usize)).unwrap();
+        let mut read = [0.0; 4];
+        view.read(0, 1 << 39, &mut read);
+        assert_eq!(read, [2.5; 4]);
+    }
+
+    #[test]
+    fn wrong_descriptions_are_refused_with_the_reason() {
+        let numbers = [0.0f64; 8];
+        let at = numbers.as_ptr() as usize;
+        let shape = packed(Scalar::F64, 1);
+        let refused = |shape: ArrayShape, count, at| {
+            View::new(shape, count, Lent::Interleaved(at))
+                .unwrap_err()
+                .0
+        };
+        assert!(refused(shape, 8, 0).contains("null"));
+        assert!(refused(shape, 8, at + 4).contains("aligned"));
+        assert!(
+            refused(
+                ArrayShape {
+                    stride: 12,
+                    ..shape
+                },
+                2,
+                at
+            )
+            .contains("multiple")
+        );
+        assert!(
+            refused(
+                ArrayShape {
+                    stride: 1 << 40,
+                    ..shape
+                },
+                2,
+                at
+            )
+            .contains("more than")
+        );
+        assert!(refused(shape, usize::MAX, at).contains("address space"));
+        assert!(refused(shape, usize::MAX / 8, at).contains("address space"));
+        assert!(
+            refused(
+                ArrayShape {
+                    stride: -8,
+                    ..shape
+                },
+                at / 8 + 2,
+                at
+            )
+            .contains("address space")
+        );
+        let vector = packed(Scalar::F64, 3);
+        assert!(
+            refused(
+                ArrayShape {
+                    stride: 16,
+                    ..vector
+                },
+                2,
+                at
+            )
+            .contains("shorter")
+        );
+        assert!(
+            refused(
+                ArrayShape {
+                    component_stride: 0,
+                    ..vector
+                },
+                2,
+                at
+            )
+            .contains("component stride")
+        );
+        assert!(View::new(shape, 0, Lent::Interleaved(0)).is_ok());
+    }
+}

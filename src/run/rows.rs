@@ -1,0 +1,516 @@
+//! From combined sums to rows: the columns that every run has, those of the gauges, and the events.
+
+use super::clock::Clock;
+use super::contribution::{Combined, Condition, Words};
+use super::history::History;
+use super::status::{Fault, Status};
+use crate::config::{Config, Coordinate};
+use crate::gauges::{Active, Entry, Moment, Plan, Presence, Reading, Reduced};
+use crate::lend::{Field, SPECIES, Species};
+use crate::series::record::{Record, Row, Value};
+use crate::series::schema::{Column, Kind, Table, ValueType};
+use crate::series::{Series, SeriesError, Trouble};
+use crate::units::constants::{GIGAYEAR, MEGAYEAR, YEAR};
+use std::collections::HashSet;
+use std::time::{Duration, SystemTime, UNIX_EPOCH};
+
+/// Number of the run table.
+const RUN: u32 = 0;
+/// Number of the table of events.
+const EVENTS: u32 = 1;
+/// How long a checkpoint waits for the disk.
+const DURABLE_PATIENCE: Duration = Duration::from_secs(5);
+/// How long closing waits for the disk.
+const CLOSE_PATIENCE: Duration = Duration::from_secs(10);
+
+/// What rank 0 remembers of a step until its reduction is complete.
+#[derive(Clone, Debug)]
+pub(super) struct Context {
+    /// The clock, where this rank accepted it.
+    pub clock: Option<Clock>,
+    /// The moment, likewise.
+    pub moment: Option<Moment>,
+    /// Steps marked since the last row, this one included.
+    pub steps: u64,
+}
+
+/// The tables of every run, before those of the gauges: the run table's first columns, and the events.
+pub(super) fn own_tables(config: &Config) -> Vec<Table> {
+    let (time_unit, about_time) = describe_time(config);
+    let column = |name: &str, unit: &str, kind, value, description: &str| {
+        Column::new("clock", name, unit, kind, value, description)
+    };
+    let mut run = vec![
+        column(
+            "step",
+            "",
+            Kind::Key,
+            ValueType::Unsigned,
+            "the host's step number",
+        ),
+        column("time", time_unit, Kind::Key, ValueType::Float, &about_time),
+        column(
+            "step_length",
+            time_unit,
+            Kind::Instant,
+            ValueType::Float,
+            "length of the host's step in the same coordinate; 0 when the host did not say",
+        ),
+        column(
+            "steps",
+            "",
+            Kind::Increment,
+            ValueType::Unsigned,
+            "steps of the host since the last row",
+        ),
+        column(
+            "checkpoint",
+            "",
+            Kind::Instant,
+            ValueType::Unsigned,
+            "1 where the host was about to write a checkpoint",
+        ),
+    ];
+    if config.expansion.cosmology().is_some() {
+        run.push(column(
+            "scale_factor",
+            "",
+            Kind::Instant,
+            ValueType::Float,
+            "scale factor",
+        ));
+        run.push(column(
+            "redshift",
+            "",
+            Kind::Instant,
+            ValueType::Float,
+            "redshift",
+        ));
+        run.push(column(
+            "age",
+            "Gyr",
+            Kind::Instant,
+            ValueType::Float,
+            "time since the Big Bang",
+        ));
+    }
+    let event = |name: &str, unit: &str, kind, value, description: &str| {
+        Column::new("library", name, unit, kind, value, description)
+    };
+    let events = vec![
+        event(
+            "step",
+            "",
+            Kind::Key,
+            ValueType::Unsigned,
+            "the step that the event belongs to",
+        ),
+        event("time", time_unit, Kind::Key, ValueType::Float, &about_time),
+        event(
+            "source",
+            "",
+            Kind::Key,
+            ValueType::Text,
+            "what the event concerns: a gauge, a rank, the library",
+        ),
+        event("text", "", Kind::Instant, ValueType::Text, "what happened"),
+    ];
+    vec![
+        Table {
+            name: "run".to_string(),
+            description: "one row per measured step".to_string(),
+            columns: run,
+        },
+        Table {
+            name: "events".to_string(),
+            description: "what the library had to say besides its numbers".to_string(),
+            columns: events,
+        },
+    ]
+}
+
+/// Unit and description of the declared time coordinate. A unit without a name of its own is told in words.
+fn describe_time(config: &Config) -> (&'static str, String) {
+    match config.clockwork.coordinate {
+        Coordinate::ScaleFactor => ("", "the host's time coordinate: scale factor".to_string()),
+        Coordinate::LogScaleFactor => (
+            "",
+            "the host's time coordinate: natural logarithm of the scale factor".to_string(),
+        ),
+        Coordinate::Redshift => ("", "the host's time coordinate: redshift".to_string()),
+        Coordinate::Time => {
+            let seconds = config.clockwork.unit_seconds();
+            let named = [
+                ("s", 1.0),
+                ("yr", YEAR),
+                ("Myr", MEGAYEAR),
+                ("Gyr", GIGAYEAR),
+            ];
+            match named
+                .into_iter()
+                .find(|(_, unit)| (seconds / unit - 1.0).abs() < 1e-12)
+            {
+                Some((name, _)) => (name, "the host's time".to_string()),
+                None => ("", format!("the host's time, in units of {seconds:e} s")),
+            }
+        }
+    }
+}
+
+/// The columns of the run table that follow those of the gauges.
+pub(super) fn closing_columns(words: &Words) -> Vec<Column> {
+    let column = |name: String, unit: &str, kind, value, description: String| {
+        Column::new("library", name, unit, kind, value, description)
+    };
+    let mut columns: Vec<Column> = words
+        .checked
+        .iter()
+        .map(|(species, field)| {
+            column(
+                format!("not_finite_{}_{}", species.name(), field.name()),
+                "",
+                Kind::Increment,
+                ValueType::Unsigned,
+                format!(
+                    "elements of {} left out because their {} is not finite",
+                    species.name(),
+                    field.name()
+                ),
+            )
+        })
+        .collect();
+    let unsigned = |name: &str, description: &str| {
+        column(
+            name.to_string(),
+            "",
+            Kind::Increment,
+            ValueType::Unsigned,
+            description.to_string(),
+        )
+    };
+    let seconds = |name: &str, description: &str| {
+        column(
+            name.to_string(),
+            "s",
+            Kind::WallClock,
+            ValueType::Float,
+            description.to_string(),
+        )
+    };
+    columns.extend([
+        unsigned(
+            "contributions_overflowed",
+            "products of finite numbers left out because they overflowed",
+        ),
+        unsigned(
+            "ranks_in_error",
+            "ranks on which something of the step could not be measured",
+        ),
+        seconds(
+            "wall_clock",
+            "when the row was completed, in seconds since 1970-01-01 00:00 UTC",
+        ),
+        seconds(
+            "host_seconds",
+            "wall-clock time since the last row; of all ranks, the largest",
+        ),
+        seconds(
+            "library_seconds",
+            "of it, time inside calls of this library; of all ranks, the largest",
+        ),
+    ]);
+    columns
+}
+
+/// Rank 0's pen: makes rows and hands them to the series.
+pub(super) struct Scribe {
+    series: Series,
+    /// Gaps already told as an event.
+    told: HashSet<(usize, Species, Option<Field>)>,
+    has_entered: bool,
+    last_step: u64,
+    last_time: f64,
+    durable: Result<(), SeriesError>,
+    complaint: Option<SeriesError>,
+}
+
+impl Scribe {
+    pub fn new(series: Series) -> Scribe {
+        Scribe {
+            series,
+            told: HashSet::new(),
+            has_entered: false,
+            last_step: 0,
+            last_time: 0.0,
+            durable: Ok(()),
+            complaint: None,
+        }
+    }
+
+    /// Lets the gauges of the first row of a leg take up what earlier legs left.
+    pub fn take_up(&mut self, history: &History, first: &Clock, gauges: &mut [Active]) {
+        let Some(state) = history.last_state_before(first.time, first.step_length) else {
+            return;
+        };
+        let last = history.last_row_before(first.time, first.step_length);
+        let is_last_row = last.is_some_and(|row| row.time == state.time);
+        for (name, words) in read_carry(&state.words) {
+            if let Some(active) = gauges
+                .iter_mut()
+                .find(|active| name_word(&active.name) == name)
+            {
+                active.gauge.take_up(words, is_last_row);
+            }
+        }
+    }
+
+    /// Turns a completed reduction into rows and hands them over.
+    #[allow(clippy::too_many_arguments)]
+    pub fn write(
+        &mut self,
+        config: &Config,
+        plan: &Plan,
+        gauges: &mut [Active],
+        context: &Context,
+        combined: &Combined,
+        reduced: Reduced,
+    ) {
+        let Some(moment) = moment_of(config, context, combined) else {
+            return;
+        };
+        (self.last_step, self.last_time) = (moment.step, moment.time);
+        let mut record = self.series.spare();
+        record.rows.clear();
+        record.carry.clear();
+        record.step = moment.step;
+        record.time = moment.time;
+        record.step_length = moment.step_length;
+
+        let mut run = clock_values(config, context, &moment);
+        let mut rows = Vec::new();
+        let mut events = Vec::new();
+        let mut states = combined.needs.iter().copied();
+        for (index, active) in gauges.iter_mut().enumerate() {
+            let needs: Vec<_> = plan.needs[index]
+                .iter()
+                .copied()
+                .zip(states.by_ref())
+                .collect();
+            let reading = Reading {
+                reduced,
+                needs: &needs,
+            };
+            let mut entry = Entry::default();
+            active.gauge.enter(&reading, &moment, &mut entry);
+            entry.run.resize(plan.columns[index].1, Value::Null);
+            run.append(&mut entry.run);
+            rows.append(&mut entry.rows);
+            self.tell_gaps(index, &active.name, &reading, &mut events);
+        }
+        run.extend(
+            combined
+                .not_finite
+                .iter()
+                .map(|&count| Value::Unsigned(count)),
+        );
+        run.push(Value::Unsigned(combined.left_out));
+        run.push(Value::Unsigned(combined.ranks(Condition::InError)));
+        run.push(Value::Float(
+            SystemTime::now()
+                .duration_since(UNIX_EPOCH)
+                .map_or(0.0, |since| since.as_secs_f64()),
+        ));
+        run.push(Value::Float(combined.host_nanoseconds as f64 * 1e-9));
+        run.push(Value::Float(combined.library_nanoseconds as f64 * 1e-9));
+        if let Some(said) = &combined.said {
+            events.push((format!("rank {}", said.rank), said.text.clone()));
+        }
+
+        record.rows.push(Row {
+            table: RUN,
+            values: run,
+        });
+        record.rows.append(&mut rows);
+        record.rows.extend(
+            events
+                .into_iter()
+                .map(|(source, text)| event_row(moment.step, moment.time, source, text)),
+        );
+        let is_checkpoint = context.clock.is_some_and(|clock| clock.checkpoint);
+        if is_checkpoint || !self.has_entered {
+            write_carry(gauges, &mut record.carry);
+        }
+        self.has_entered = true;
+        if is_checkpoint {
+            self.durable = self.series.enter_durably(record, DURABLE_PATIENCE);
+        } else if let Err(error) = self.series.enter(record) {
+            self.complaint = Some(error);
+        }
+    }
+
+    /// Says once which fields a gauge does without.
+    fn tell_gaps(
+        &mut self,
+        index: usize,
+        name: &str,
+        reading: &Reading,
+        events: &mut Vec<(String, String)>,
+    ) {
+        for (species, species_name) in SPECIES {
+            if !reading
+                .needs
+                .iter()
+                .any(|(need, _)| need.species == species)
+            {
+                continue;
+            }
+            let (field, text) = match reading.presence(species) {
+                Presence::Measured => continue,
+                Presence::NotLent => (
+                    None,
+                    format!("{species_name} is not lent; what is measured of it is null"),
+                ),
+                Presence::Lacking(field) => (
+                    Some(field),
+                    format!(
+                        "{species_name} {} is missing on a rank that has {species_name}; what is measured of it is null",
+                        field.name()
+                    ),
+                ),
+            };
+            if self.told.insert((index, species, field)) {
+                events.push((name.to_string(), text));
+            }
+        }
+    }
+
+    /// Notes in the series why the run fell asleep.
+    pub fn note_sleep(&mut self, why: &str) {
+        let (step, time) = (self.last_step, self.last_time);
+        let text = format!("the run fell asleep: {why}");
+        let row = event_row(step, time, "library".to_string(), text);
+        let record = Record {
+            step,
+            time,
+            step_length: 0.0,
+            rows: vec![row],
+            carry: Vec::new(),
+        };
+        if let Err(error) = self.series.enter(record) {
+            self.complaint = Some(error);
+        }
+    }
+
+    /// Is the last checkpoint's row safe on disk?
+    pub fn make_durable(&mut self) -> Result<(), Fault> {
+        std::mem::replace(&mut self.durable, Ok(())).map_err(|error| fault(&error))
+    }
+
+    /// What the disk refused since this was last asked.
+    pub fn complain_once(&mut self) -> Result<(), Fault> {
+        match self.complaint.take() {
+            Some(error) => Err(fault(&error)),
+            None => Ok(()),
+        }
+    }
+
+    pub fn written_and_lost(&self) -> (u64, u64) {
+        let status = self.series.status();
+        (status.records_written, status.records_missing)
+    }
+
+    pub fn close(self) -> Result<(), Fault> {
+        self.series
+            .close(CLOSE_PATIENCE)
+            .map_err(|error| fault(&error))
+    }
+}
+
+/// A gauge's name as one word, by which it finds its state again.
+fn name_word(name: &str) -> u64 {
+    u64::from(crc32c::crc32c(name.as_bytes()))
+}
+
+/// Appends what every gauge must remember: its name, the number of its words, the words.
+fn write_carry(gauges: &[Active], into: &mut Vec<u64>) {
+    for active in gauges {
+        let words = active.gauge.carry();
+        if !words.is_empty() {
+            into.extend([name_word(&active.name), words.len() as u64]);
+            into.extend(words);
+        }
+    }
+}
+
+/// Splits carried words into gauges; stops where they make no sense.
+fn read_carry(mut words: &[u64]) -> Vec<(u64, &[u64])> {
+    let mut parts = Vec::new();
+    while let [name, length, rest @ ..] = words {
+        let Some((own, rest)) = usize::try_from(*length)
+            .ok()
+            .and_then(|length| rest.split_at_checked(length))
+        else {
+            break;
+        };
+        parts.push((*name, own));
+        words = rest;
+    }
+    parts
+}
+
+/// The status and text that a host gets for an error of the series.
+pub(super) fn fault(error: &SeriesError) -> Fault {
+    let status = match error.trouble {
+        Trouble::NotDurable => Status::NotDurable,
+        Trouble::Misfit => Status::Internal,
+        _ => Status::Disk,
+    };
+    Fault::new(status, error.to_string())
+}
+
+/// The moment of a row: this rank's own, or what the others' clocks say where this rank refused its own.
+fn moment_of(config: &Config, context: &Context, combined: &Combined) -> Option<Moment> {
+    let (step, _) = combined.steps?;
+    let mut moment = match context.moment {
+        Some(moment) => moment,
+        None => {
+            let (time, _) = combined.times?;
+            super::core::moment_without_history(config, step, time).ok()?
+        }
+    };
+    if combined.without_interval > 0 {
+        // Some rank could not tell what was born since the last row.
+        moment.interval = None;
+    }
+    Some(moment)
+}
+
+fn clock_values(config: &Config, context: &Context, moment: &Moment) -> Vec<Value> {
+    let checkpoint = context.clock.is_some_and(|clock| clock.checkpoint);
+    let mut values = vec![
+        Value::Unsigned(moment.step),
+        Value::Float(moment.time),
+        Value::Float(moment.step_length),
+        Value::Unsigned(context.steps),
+        Value::Unsigned(u64::from(checkpoint)),
+    ];
+    if config.expansion.cosmology().is_some() {
+        values.push(Value::Float(moment.scale_factor));
+        values.push(moment.redshift.into());
+        values.push(Value::Float(moment.age / GIGAYEAR));
+    }
+    values
+}
+
+fn event_row(step: u64, time: f64, source: String, text: String) -> Row {
+    let values = vec![
+        Value::Unsigned(step),
+        Value::Float(time),
+        Value::Text(source),
+        Value::Text(text),
+    ];
+    Row {
+        table: EVENTS,
+        values,
+    }
+}
