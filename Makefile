@@ -112,17 +112,20 @@ hosts: $(C_HOSTS) $(FORTRAN_HOSTS) $(if $(SALTMARSH_SOURCES),$(SALTMARSH))
 
 $(C_HOSTS): $(HOST)/%: ffi-examples/%.c $(HEADERS) | prepare-hosts $(LIB)/liblimnograph.so
 	@mkdir -p $(@D)
-	$(CC) $(C_STRICT) $(CFLAGS) $< -o $@ $(LINK_ALONE) -lm
+	@echo 'Building $@'
+	@$(CC) $(C_STRICT) $(CFLAGS) $< -o $@ $(LINK_ALONE) -lm
 
 $(FORTRAN_HOSTS): $(HOST)/%: ffi-examples/%.f90 include/limnograph.f90 | prepare-hosts $(LIB)/liblimnograph_mpi.so
 	@mkdir -p $(HOST)/objects/$*
-	$(MPIF90) $(F_STRICT) $(FFLAGS) -J$(HOST)/objects/$* include/limnograph.f90 $< -o $@ $(LINK_MPI)
+	@echo 'Building $@'
+	@$(MPIF90) $(F_STRICT) $(FFLAGS) -J$(HOST)/objects/$* include/limnograph.f90 $< -o $@ $(LINK_MPI)
 
 $(HOST)/objects/saltmarsh/%.o: ffi-examples/saltmarsh/%.c | prepare-hosts
 	@mkdir -p $(@D)
 	@$(MPICC) $(C_STRICT) $(CFLAGS) -MMD -MP -c $< -o $@
 $(SALTMARSH): $(SALTMARSH_OBJECTS) | $(LIB)/liblimnograph_mpi.so
-	$(MPICC) $^ -o $@ $(LINK_MPI) -lfftw3_mpi -lfftw3 -lm
+	@echo 'Building $@'
+	@$(MPICC) $^ -o $@ $(LINK_MPI) -lfftw3_mpi -lfftw3 -lm
 -include $(SALTMARSH_OBJECTS:.o=.d)
 
 # --- Demo ---------------------------------------------------------------------------------------------
