@@ -19,7 +19,6 @@ export BUILD MPICC MPIF90
 
 VERSION := $(shell sed -n 's/^version = "\(.*\)"/\1/p' Cargo.toml | head -n 1)
 MAJOR   := $(firstword $(subst ., ,$(VERSION)))
-ROOT    := $(abspath $(BUILD))
 LIB     := $(BUILD)/lib
 HOST    := $(BUILD)/host
 PROGRAM := $(BUILD)/bin/limnograph
@@ -104,8 +103,8 @@ SALTMARSH     := $(HOST)/saltmarsh
 SALTMARSH_SOURCES := $(wildcard ffi-examples/saltmarsh/*.c)
 SALTMARSH_OBJECTS := $(patsubst ffi-examples/%.c,$(HOST)/objects/%.o,$(SALTMARSH_SOURCES))
 # The shared libraries are found where they were built.
-LINK_ALONE := -L$(LIB) -Wl,-rpath,$(ROOT)/lib -llimnograph
-LINK_MPI   := -L$(LIB) -Wl,-rpath,$(ROOT)/lib -llimnograph_mpi
+LINK_ALONE := -L$(LIB) -Wl,-rpath,$(abspath $(LIB)) -llimnograph
+LINK_MPI   := -L$(LIB) -Wl,-rpath,$(abspath $(LIB)) -llimnograph_mpi
 C_STRICT   := -std=c99 -Wall -Wextra -Iinclude
 F_STRICT   := -std=f2008 -Wall -Wextra
 
@@ -113,17 +112,20 @@ hosts: $(C_HOSTS) $(FORTRAN_HOSTS) $(if $(SALTMARSH_SOURCES),$(SALTMARSH))
 
 $(C_HOSTS): $(HOST)/%: ffi-examples/%.c $(HEADERS) | prepare-hosts $(LIB)/liblimnograph.so
 	@mkdir -p $(@D)
-	$(CC) $(C_STRICT) $(CFLAGS) $< -o $@ $(LINK_ALONE) -lm
+	@echo 'Building $@'
+	@$(CC) $(C_STRICT) $(CFLAGS) $< -o $@ $(LINK_ALONE) -lm
 
 $(FORTRAN_HOSTS): $(HOST)/%: ffi-examples/%.f90 include/limnograph.f90 | prepare-hosts $(LIB)/liblimnograph_mpi.so
 	@mkdir -p $(HOST)/objects/$*
-	$(MPIF90) $(F_STRICT) $(FFLAGS) -J$(HOST)/objects/$* include/limnograph.f90 $< -o $@ $(LINK_MPI)
+	@echo 'Building $@'
+	@$(MPIF90) $(F_STRICT) $(FFLAGS) -J$(HOST)/objects/$* include/limnograph.f90 $< -o $@ $(LINK_MPI)
 
 $(HOST)/objects/saltmarsh/%.o: ffi-examples/saltmarsh/%.c | prepare-hosts
 	@mkdir -p $(@D)
 	@$(MPICC) $(C_STRICT) $(CFLAGS) -MMD -MP -c $< -o $@
 $(SALTMARSH): $(SALTMARSH_OBJECTS) | $(LIB)/liblimnograph_mpi.so
-	$(MPICC) $^ -o $@ $(LINK_MPI) -lfftw3_mpi -lfftw3 -lm
+	@echo 'Building $@'
+	@$(MPICC) $^ -o $@ $(LINK_MPI) -lfftw3_mpi -lfftw3 -lm
 -include $(SALTMARSH_OBJECTS:.o=.d)
 
 # --- Demo ---------------------------------------------------------------------------------------------
@@ -174,7 +176,7 @@ $(PYTHON): tests/astropy/requirements.txt | prepare-tests
 	@$(PYTHON) -m pip install --quiet --disable-pip-version-check -r $<
 	@touch $@
 
-bench: prepare-hosts libraries program
+bench: prepare-hosts libraries program hosts
 	@bench/run.sh
 
 # --- Install ------------------------------------------------------------------------------------------
