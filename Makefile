@@ -164,10 +164,11 @@ test-mpi: prepare-hosts
 	@$(CARGO) test $(CARGO_MPI) --lib --test 'mpi_*'
 test-hosts: prepare-tests libraries program hosts
 	@scripts/test-hosts.sh
-test-python: prepare-tests $(PYTHON) $(PROGRAM)
+test-python: prepare-tests $(PYTHON) $(PROGRAM) $(SALTMARSH)
 	@mkdir -p $(BUILD)/test
 	@$(CARGO) run --quiet $(CARGO_ALONE) --example print_units_and_cosmology -- $(BUILD)/test/units.json
 	@$(PYTHON) tests/astropy/check_units_and_cosmology.py $(BUILD)/test/units.json
+	@PYTHON=$(PYTHON) tests/astropy/rows_of_saltmarsh.sh $(BUILD)/test/rows
 
 $(PYTHON): tests/astropy/requirements.txt | prepare-tests
 	$(say) 'A virtual environment for the checks against astropy and scipy'
