@@ -1,9 +1,7 @@
-#define _POSIX_C_SOURCE 200809L /* for isatty */
 #include "report.h"
 
 #include <math.h>
 #include <string.h>
-#include <unistd.h>
 
 #define SMOOTHING_GYR 0.5
 
@@ -100,16 +98,14 @@ static void progress(struct history *history, const struct simulation *simulatio
     double start = -log1p(simulation->parameters.start_redshift);
     double end = -log1p(simulation->parameters.end_redshift);
     double done = (log(now->scale_factor) - start) / (end - start);
-    int terminal = isatty(STDOUT_FILENO);
     int twentieth = (int)floor(done * 20.0 + 1e-9);
-    if (!terminal && twentieth == history->last_twentieth)
+    if (twentieth == history->last_twentieth)
         return;
     history->last_twentieth = twentieth;
-    printf("%sstep %5llu  z %6.3f  %3.0f%%  sfrd %.2e Msun/yr/Mpc^3  stars %6.0f  holes %3.0f  %5.1f s%s",
-           terminal ? "\r" : "", (unsigned long long)simulation->clock.step,
+    printf("step %5llu  z %6.3f  %3.0f%%  sfrd %.2e Msun/yr/Mpc^3  stars %6.0f  holes %3.0f  %5.1f s\n",
+           (unsigned long long)simulation->clock.step,
            fabs(redshift(simulation)), 100.0 * done, now->star_formation, now->counts[STARS],
-           now->counts[BLACK_HOLES], MPI_Wtime() - history->started,
-           terminal && twentieth < 20 ? "" : "\n");
+           now->counts[BLACK_HOLES], MPI_Wtime() - history->started);
     fflush(stdout);
 }
 
