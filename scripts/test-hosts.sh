@@ -1,9 +1,10 @@
 #!/bin/bash
-# Builds and runs the tests that are hosts: small C and Fortran programs, and scripts that use the built hosts.
+# Builds and runs the tests that are hosts: small Fortran programs, and scripts that use the built hosts. (Those
+# in C have a script of their own, tests/c/run.sh.)
 #
 #   scripts/test-hosts.sh [PART OF A NAME]...
 #
-# tests/c/*.c, tests/fortran/*.f90   one program each. A comment line `ranks: 1 2 3` in it means: with MPI, on each
+# tests/fortran/*.f90                one program each. A comment line `ranks: 1 2 3` in it means: with MPI, on each
 #                                    of these numbers of ranks; without one it runs alone. `flags: -Ofast` are given
 #                                    to the compiler; `link: static` takes the static library.
 # tests/hosts/*.sh                   run as they are.
@@ -85,7 +86,7 @@ build() {
 }
 
 shopt -s nullglob
-for source in tests/c/*.c tests/fortran/*.f90; do
+for source in tests/fortran/*.f90; do
     name=$(basename "${source%.*}")
     wanted "$name" || continue
     program=$place/bin/$name

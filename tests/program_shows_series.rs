@@ -167,7 +167,7 @@ fn sight_points_at_damage() {
 fn export_writes_names_with_units_and_cells_that_read_back() {
     let (_room, path) = series(70);
     let text = out(&run("export", &path, &["--to", "csv"]));
-    let mut lines = text.split("\r\n");
+    let mut lines = text.split("\n");
     let header: Vec<&str> = lines.next().expect("header").split(',').collect();
     assert_eq!(header[..3], ["step", "time [Gyr]", "redshift"]);
     let place = |name: &str| {

@@ -27,7 +27,7 @@ void parameters_default(struct parameters *parameters)
         .initial_kelvin = 15.0,
         .reionisation_redshift = 7.0,
         .jeans_cells = 2.0,
-        .star_threshold = 5e-4,
+        .star_threshold = 3e-4,
         .star_overdensity = 60.0,
         .star_efficiency = 0.1,
         .star_kelvin = 1e5,
