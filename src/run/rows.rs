@@ -377,7 +377,8 @@ impl Scribe {
                 Presence::Lacking(field) => (
                     Some(field),
                     format!(
-                        "{species_name} {} is missing on a rank that has {species_name}; what is measured of it is null",
+                        "{species_name} {} was not lent, or {species_name} could not be lent, on a rank that has any; \
+                         what is measured of it is null",
                         field.name()
                     ),
                 ),
