@@ -165,9 +165,7 @@ test-mpi: prepare-hosts
 test-hosts: prepare-tests libraries program hosts
 	@scripts/test-hosts.sh
 test-python: prepare-tests $(PYTHON) $(PROGRAM)
-	@mkdir -p $(BUILD)/test
-	@$(CARGO) run --quiet $(CARGO_ALONE) --example print_units_and_cosmology -- $(BUILD)/test/units.json
-	@$(PYTHON) tests/astropy/check_units_and_cosmology.py $(BUILD)/test/units.json
+	@scripts/test-python.sh
 
 $(PYTHON): tests/astropy/requirements.txt | prepare-tests
 	$(say) 'A virtual environment for the checks against astropy and scipy'
