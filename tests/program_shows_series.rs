@@ -110,6 +110,29 @@ fn sight_says_what_was_not_measured_and_why() {
 }
 
 #[test]
+fn sight_repeats_what_the_library_said_of_itself_last() {
+    let (_room, path) = series(5);
+    let series = Series::open(&path, opening()).expect("opens");
+    let mut last = record(5);
+    last.rows.push(common::event(
+        5,
+        "library",
+        "the run fell asleep: ranks disagree\u{1b}[2J on the step",
+    ));
+    enter(&series, last);
+    series.close(PATIENCE).expect("closes");
+    let text = out(&run("sight", &path, &[]));
+    assert!(
+        text.contains("step 5, library: the run fell asleep: ranks disagree"),
+        "{text}"
+    );
+    assert!(
+        !text.contains('\u{1b}'),
+        "a text in a series does not steer the terminal"
+    );
+}
+
+#[test]
 fn sight_follows_a_run_that_is_still_written() {
     let room = tempfile::tempdir().expect("room");
     let path = room.path().join("saltmarsh.limno");

@@ -2,6 +2,7 @@
 
 #![allow(clippy::expect_used)]
 
+use limnograph::reader::SeriesReader;
 use limnograph::series::record::{Record, Row, Value};
 use limnograph::series::schema::{Column, Kind, Schema, Table, ValueType};
 use limnograph::series::{Opening, Series, Trouble};
@@ -167,4 +168,33 @@ fn a_column_that_changes_its_unit_is_refused_unless_it_is_meant() {
     assert!(text.contains("`time`") && text.contains("`Gyr`"), "{text}");
     changed.accepts_changes = true;
     assert_eq!(Series::open(&path, changed).expect("meant").leg(), 2);
+}
+
+#[test]
+fn openers_at_the_same_moment_never_share_a_leg_or_a_file() {
+    let room = tempfile::tempdir().expect("room");
+    let path = room.path().join("saltmarsh.limno");
+    let openers: Vec<_> = (0..8)
+        .map(|number| {
+            let path = path.clone();
+            std::thread::spawn(move || {
+                let series = Series::open(&path, opening()).expect("opens");
+                series
+                    .enter_durably(record(number), Duration::from_secs(60))
+                    .expect("durable");
+                let leg = series.leg();
+                series.close(Duration::from_secs(60)).expect("closes");
+                leg
+            })
+        })
+        .collect();
+    let mut legs: Vec<u32> = openers
+        .into_iter()
+        .map(|opener| opener.join().expect("opener"))
+        .collect();
+    legs.sort_unstable();
+    legs.dedup();
+    assert_eq!(legs.len(), 8);
+    let reader = SeriesReader::open(&path).expect("opens");
+    assert_eq!((reader.records(), reader.damage()), (8, vec![]));
 }

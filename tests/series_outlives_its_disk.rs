@@ -9,6 +9,7 @@ use common::{PATIENCE, opening, record};
 use limnograph::reader::SeriesReader;
 use limnograph::series::disk::{Disk, DiskFile, SystemDisk};
 use limnograph::series::{Limits, Opening, Series, Trouble};
+use std::collections::HashMap;
 use std::io;
 use std::path::{Path, PathBuf};
 use std::sync::atomic::{AtomicBool, AtomicI32, AtomicU64, Ordering};
@@ -26,6 +27,8 @@ struct Faults {
     sync_fails: AtomicBool,
     /// Stops every write for as long as it is held.
     stall: Mutex<()>,
+    /// How much of each file is on stable storage.
+    synced: Mutex<HashMap<PathBuf, u64>>,
 }
 
 impl Faults {
@@ -42,25 +45,32 @@ impl Faults {
 }
 
 struct FaultyDisk(SystemDisk, Arc<Faults>);
-struct FaultyFile(Box<dyn DiskFile>, Arc<Faults>);
+struct FaultyFile {
+    file: Box<dyn DiskFile>,
+    faults: Arc<Faults>,
+    path: PathBuf,
+    written: u64,
+}
 
 impl DiskFile for FaultyFile {
     fn write_at(&mut self, bytes: &[u8], offset: u64) -> io::Result<usize> {
-        drop(self.1.stall.lock());
-        let room = self.1.room.load(Ordering::SeqCst);
-        if room == 0 {
+        drop(self.faults.stall.lock());
+        let room = &self.faults.room;
+        let left = room.load(Ordering::SeqCst);
+        if left == 0 {
             return Err(io::Error::from_raw_os_error(
-                self.1.error.load(Ordering::SeqCst),
+                self.faults.error.load(Ordering::SeqCst),
             ));
         }
         let count = self
-            .0
-            .write_at(&bytes[..bytes.len().min(room as usize)], offset)?;
-        if room != u64::MAX {
+            .file
+            .write_at(&bytes[..bytes.len().min(left as usize)], offset)?;
+        self.written = offset + count as u64;
+        if left != u64::MAX {
             // The test may give room back at any moment; only what was counted is taken.
-            let _ = self.1.room.compare_exchange(
-                room,
-                room - count as u64,
+            let _ = room.compare_exchange(
+                left,
+                left - count as u64,
                 Ordering::SeqCst,
                 Ordering::SeqCst,
             );
@@ -69,21 +79,27 @@ impl DiskFile for FaultyFile {
     }
 
     fn truncate(&mut self, length: u64) -> io::Result<()> {
-        if self.1.truncate_fails.load(Ordering::SeqCst) {
+        if self.faults.truncate_fails.load(Ordering::SeqCst) {
             return Err(io::Error::from_raw_os_error(libc::EIO));
         }
-        self.0.truncate(length)
+        self.file.truncate(length)
     }
 
     fn sync(&mut self) -> io::Result<()> {
-        if self.1.sync_fails.load(Ordering::SeqCst) {
+        if self.faults.sync_fails.load(Ordering::SeqCst) {
             return Err(io::Error::from_raw_os_error(libc::EIO));
         }
-        self.0.sync()
+        self.file.sync()?;
+        self.faults
+            .synced
+            .lock()
+            .expect("lock")
+            .insert(self.path.clone(), self.written);
+        Ok(())
     }
 
     fn is_at(&self, path: &Path) -> bool {
-        self.0.is_at(path)
+        self.file.is_at(path)
     }
 }
 
@@ -93,7 +109,12 @@ impl Disk for FaultyDisk {
     }
 
     fn create(&mut self, path: &Path) -> io::Result<Box<dyn DiskFile>> {
-        Ok(Box::new(FaultyFile(self.0.create(path)?, self.1.clone())))
+        Ok(Box::new(FaultyFile {
+            file: self.0.create(path)?,
+            faults: self.1.clone(),
+            path: path.to_path_buf(),
+            written: 0,
+        }))
     }
 
     fn sync_directory(&mut self, path: &Path) -> io::Result<()> {
@@ -393,4 +414,79 @@ fn a_long_journal_is_continued_in_the_next() {
             .iter()
             .all(|(_, bytes)| *bytes < 30_000)
     );
+}
+
+/// Leaves of every file what was on stable storage, as a power cut at this moment might.
+fn cut_power(faults: &Faults) {
+    for (path, &length) in faults.synced.lock().expect("lock").iter() {
+        let file = std::fs::OpenOptions::new()
+            .write(true)
+            .open(path)
+            .expect("open");
+        file.set_len(length).expect("cut");
+    }
+}
+
+#[test]
+fn a_durable_row_survives_a_power_cut_at_once_and_others_after_the_sync_interval() {
+    let limits = Limits {
+        sync_interval: Duration::from_secs(3600),
+        ..Limits::default()
+    };
+    let scene = Scene::new(Opening {
+        limits,
+        ..opening()
+    });
+    scene.enter(0..20);
+    scene
+        .series
+        .enter_durably(record(20), PATIENCE)
+        .expect("durable");
+    scene.enter(21..30);
+    scene.wait_until_written(30);
+    assert_eq!(scene.series.status().records_durable, 21);
+    cut_power(&scene.faults);
+    assert_eq!(
+        SeriesReader::open(&scene.path).expect("opens").records(),
+        21
+    );
+
+    let limits = Limits {
+        sync_interval: Duration::from_millis(30),
+        ..Limits::default()
+    };
+    let scene = Scene::new(Opening {
+        limits,
+        ..opening()
+    });
+    scene.enter(0..20);
+    scene.wait_until("synced", |scene| {
+        scene.series.status().records_durable == 20
+    });
+    cut_power(&scene.faults);
+    assert_eq!(
+        SeriesReader::open(&scene.path).expect("opens").records(),
+        20
+    );
+}
+
+#[test]
+fn memory_for_rows_not_yet_synced_is_bounded_by_earlier_syncs() {
+    let limits = Limits {
+        sync_interval: Duration::from_secs(3600),
+        unsynced_bytes: 4096,
+        ..Limits::default()
+    };
+    let scene = Scene::new(Opening {
+        limits,
+        ..opening()
+    });
+    scene.enter(0..100);
+    scene.wait_until_written(100);
+    assert!(
+        scene.series.status().records_durable >= 90,
+        "{:?}",
+        scene.series.status()
+    );
+    scene.close_and_check(0..100);
 }

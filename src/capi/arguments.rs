@@ -2,19 +2,35 @@
 //! can be checked: null, alignment, size.
 
 use super::functions::{Description, LIMNO_VERSION, scalar_of};
-use super::types::{Array, Clock, Options, Standing, Tally};
+use super::types::{Array, Clock, LimnoRun, Options, Standing, Tally};
 use crate::gauges::TallyBatch;
 use crate::lend::ArrayShape;
-use crate::run::{self, ConfigSource, Fault, Request, Status};
-use std::ffi::{CStr, c_char};
+use crate::run::{self, ConfigSource, Fault, Refusal, Request, Status};
+use std::ffi::{CStr, c_char, c_void};
 
 /// Longest text of a host that is read.
 const LONGEST_TEXT: usize = 1 << 20;
 /// Most components a field can have.
 const MOST_COMPONENTS: u32 = 4096;
+/// Most events in a batch.
+const MOST_EVENTS: usize = 1 << 40;
+/// What is wrong where a handle has no place to go.
+pub(super) const NO_PLACE: &str = "`run` is null or misaligned; give the address of a limno_run *";
 
 fn bad<T>(text: String) -> Result<T, Fault> {
     Fault::err(Status::BadArgument, text)
+}
+
+/// Reads a text that must be there.
+///
+/// # Safety
+/// `pointer` is null or leads to a text with an end.
+pub(super) unsafe fn needed_text(name: &str, pointer: *const c_char) -> Result<String, Fault> {
+    // SAFETY: passed on.
+    match unsafe { text(name, pointer) }? {
+        Some(text) => Ok(text),
+        None => bad(format!("`{name}` is null; give a name")),
+    }
 }
 
 /// Reads a text; none where the pointer is null.
@@ -99,6 +115,7 @@ pub(super) unsafe fn options_of(
     config: *const c_char,
     series: *const c_char,
     options: *const Options,
+    run: *mut *mut LimnoRun,
 ) -> Request {
     let mut request = Request {
         config: ConfigSource {
@@ -114,9 +131,14 @@ pub(super) unsafe fn options_of(
         is_complete: false,
     };
     // SAFETY: passed on.
-    if let Err(fault) = unsafe { fill(&mut request, version, config, series, options) } {
-        request.fault = Some(fault);
-    }
+    let filled = unsafe { fill(&mut request, version, config, series, options) };
+    // Found before anything is opened, so that the other ranks do not open what this one cannot hold.
+    let placed = if run.is_null() || !run.is_aligned() {
+        bad(NO_PLACE.to_string())
+    } else {
+        Ok(())
+    };
+    request.fault = filled.and(placed).err();
     request
 }
 
@@ -180,35 +202,55 @@ fn version_text(version: u32) -> String {
 
 /// # Safety
 /// `clock` is null or valid.
-pub(super) unsafe fn checked_clock(clock: *const Clock) -> Result<run::Clock, Fault> {
+pub(super) unsafe fn checked_clock(clock: *const Clock) -> Result<run::Clock, Refusal> {
     // SAFETY: passed on.
     let clock = unsafe { sized("clock", "limno_clock", 24, clock) }?;
-    for (name, flag) in [
-        ("synchronised", clock.synchronised),
-        ("checkpoint", clock.checkpoint),
-    ] {
-        if flag != 0 && flag != 1 {
-            return Fault::err(
-                Status::BadClock,
-                format!(
-                    "clock of step {}: `{name}` is {flag}; expected 0 or 1",
-                    clock.step
-                ),
-            );
-        }
+    let flag = |name: &str, value: i32| match value {
+        0 | 1 => Ok(value == 1),
+        _ => Fault::err(
+            Status::BadClock,
+            format!(
+                "clock of step {}: `{name}` is {value}; expected 0 or 1",
+                clock.step
+            ),
+        ),
+    };
+    match (
+        flag("synchronised", clock.synchronised),
+        flag("checkpoint", clock.checkpoint),
+    ) {
+        (Ok(synchronised), Ok(checkpoint)) => Ok(run::Clock {
+            step: clock.step,
+            // Makes a negative zero a plain one, so that ranks cannot differ by it.
+            time: clock.time + 0.0,
+            step_length: clock.step_length,
+            synchronised,
+            checkpoint,
+        }),
+        (synchronised, checkpoint) => Err(Refusal {
+            step: Some(clock.step),
+            synchronised: synchronised.as_ref().ok().copied(),
+            checkpoint: checkpoint.as_ref().ok().copied(),
+            fault: match (synchronised, checkpoint) {
+                (Err(fault), _) | (_, Err(fault)) => fault,
+                _ => Fault::new(Status::BadClock, "a flag of the clock is neither 0 nor 1"),
+            },
+        }),
     }
-    Ok(run::Clock {
-        step: clock.step,
-        time: clock.time,
-        step_length: clock.step_length,
-        synchronised: clock.synchronised == 1,
-        checkpoint: clock.checkpoint == 1,
-    })
+}
+
+/// How a list of one pointer per component is treated.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(super) enum List {
+    /// Read, unless a field of so many components makes its length doubtful.
+    Read(Option<usize>),
+    /// Left alone.
+    Ignored,
 }
 
 /// # Safety
-/// `array` is null or valid, and so is its list of arrays.
-pub(super) unsafe fn checked_array(array: *const Array) -> Result<Description, Fault> {
+/// `array` is null or valid, and so is its list of arrays where it is read.
+pub(super) unsafe fn checked_array(array: *const Array, list: List) -> Result<Description, Fault> {
     // SAFETY: passed on.
     let array = unsafe { sized("array", "limno_array", size_of::<Array>(), array) }?;
     let scalar = scalar_of(array.scalar)?;
@@ -224,17 +266,13 @@ pub(super) unsafe fn checked_array(array: *const Array) -> Result<Description, F
     } else {
         array.component_stride
     };
-    let arrays = if array.arrays.is_null() {
-        None
-    } else if !array.arrays.is_aligned() {
-        return bad("`arrays` is misaligned; give the address of an array of pointers".to_string());
-    } else {
-        // SAFETY: not null and aligned; that it holds one pointer per component is the caller's duty.
-        Some(
-            (0..components)
-                .map(|index| unsafe { *array.arrays.add(index) } as usize)
-                .collect(),
-        )
+    let arrays = match list {
+        _ if array.arrays.is_null() => None,
+        List::Ignored => Some(Vec::new()),
+        // The list may be as short as the field has components: it is refused without being read.
+        List::Read(Some(expected)) if expected != components => Some(vec![0; components]),
+        // SAFETY: not null; that it holds one pointer per component is the caller's duty.
+        List::Read(_) => Some(unsafe { listed(array.arrays, components) }?),
     };
     let shape = ArrayShape {
         scalar,
@@ -247,6 +285,23 @@ pub(super) unsafe fn checked_array(array: *const Array) -> Result<Description, F
         data: array.data as usize,
         arrays,
     })
+}
+
+/// Reads a list of pointers.
+///
+/// # Safety
+/// `list` leads to so many pointers, aligned or not.
+pub(super) unsafe fn listed(
+    list: *const *const c_void,
+    components: usize,
+) -> Result<Vec<usize>, Fault> {
+    if !list.is_aligned() {
+        return bad("`arrays` is misaligned; give the address of an array of pointers".to_string());
+    }
+    // SAFETY: aligned; the rest is the caller's duty.
+    Ok((0..components)
+        .map(|index| unsafe { *list.add(index) } as usize)
+        .collect())
 }
 
 /// # Safety
@@ -262,6 +317,12 @@ pub(super) unsafe fn checked_tally<'a>(
     let Some(channel) = channel else {
         return bad("`channel` is null; name a channel, such as \"wind\"".to_string());
     };
+    if batch.count > MOST_EVENTS {
+        return bad(format!(
+            "tally on channel {channel}: {} events are more than any process has; is the count a negative number?",
+            batch.count
+        ));
+    }
     let named =
         |name: &str, pointer: *const f64, each: usize| -> Result<Option<&'a [f64]>, Fault> {
             if pointer.is_null() || batch.count == 0 {
@@ -272,18 +333,11 @@ pub(super) unsafe fn checked_tally<'a>(
                     "tally on channel {channel}: `{name}` at {pointer:?} is misaligned for doubles"
                 ));
             }
-            let length = batch
-                .count
-                .checked_mul(each)
-                .filter(|&length| length <= isize::MAX as usize / 8);
-            let Some(length) = length else {
-                return bad(format!(
-                    "tally on channel {channel}: {} events exceed the address space",
-                    batch.count
-                ));
-            };
-            // SAFETY: not null, aligned, and of a length that fits; that the numbers are there is the caller's duty.
-            Ok(Some(unsafe { std::slice::from_raw_parts(pointer, length) }))
+            // SAFETY: not null, aligned, and of a length that fits, as the count is bounded above and `each` is small;
+            // that the numbers are there is the caller's duty.
+            Ok(Some(unsafe {
+                std::slice::from_raw_parts(pointer, batch.count * each)
+            }))
         };
     if !batch.elements.is_null() && elements == 0 {
         return bad(format!(
@@ -302,16 +356,22 @@ pub(super) unsafe fn checked_tally<'a>(
     Ok((channel, checked))
 }
 
-/// Writes an answer where the host wants it.
-///
-/// # Safety
-/// `place` is null or valid.
-pub(super) unsafe fn write_out(name: &str, place: *mut i32, value: i32) -> Result<(), Fault> {
+/// Is there a place for an answer?
+pub(super) fn place_for(name: &str, place: *mut i32) -> Result<(), Fault> {
     if place.is_null() || !place.is_aligned() {
         return bad(format!(
             "`{name}` is null or misaligned; give the address of an int32_t"
         ));
     }
+    Ok(())
+}
+
+/// Writes an answer where the host wants it.
+///
+/// # Safety
+/// `place` is null or valid.
+pub(super) unsafe fn write_out(name: &str, place: *mut i32, value: i32) -> Result<(), Fault> {
+    place_for(name, place)?;
     // SAFETY: not null and aligned; that it is valid is the caller's duty.
     unsafe { place.write(value) };
     Ok(())

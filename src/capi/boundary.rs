@@ -84,10 +84,7 @@ pub(super) fn opening(
         let opened = body()?;
         if handle.is_null() || !handle.is_aligned() {
             let _ = registry::close(opened);
-            return Fault::err(
-                Status::BadArgument,
-                "`run` is null or misaligned; give the address of a limno_run *",
-            );
+            return Fault::err(Status::BadArgument, super::arguments::NO_PLACE);
         }
         // SAFETY: as above.
         unsafe { handle.write(opened) };

@@ -1,7 +1,8 @@
 //! The exported functions, in the order in which a host meets them.
 
 use super::arguments::{
-    checked_array, checked_clock, checked_tally, options_of, text, write_out, write_standing,
+    List, checked_array, checked_clock, checked_tally, listed, needed_text, options_of, place_for,
+    text, write_out, write_standing,
 };
 use super::boundary::{enter_run, opening, plain};
 use super::registry;
@@ -43,7 +44,7 @@ pub unsafe extern "C" fn limno_open(
 ) -> Status {
     opening(run, || {
         // SAFETY: the host's duty, stated above.
-        let request = unsafe { options_of(header_version, config, series, options) };
+        let request = unsafe { options_of(header_version, config, series, options, run) };
         registry::open_alone(request)
     })
 }
@@ -73,9 +74,13 @@ pub unsafe extern "C" fn limno_open_communicator(
 ) -> Status {
     opening(run, || {
         // SAFETY: the host's duty, stated above.
-        let request = unsafe { options_of(header_version, config, series, options) };
+        let mut request = unsafe { options_of(header_version, config, series, options, run) };
         // SAFETY: as above.
-        let mpi = unsafe { text("mpi", mpi) }?;
+        let mpi = unsafe { text("mpi", mpi) }.unwrap_or_else(|fault| {
+            // The other ranks must hear of it.
+            request.fault.get_or_insert(fault);
+            None
+        });
         registry::open_communicator(
             request,
             communicator,
@@ -101,7 +106,7 @@ pub unsafe extern "C" fn limno_open_fortran(
 ) -> Status {
     opening(run, || {
         // SAFETY: the host's duty, stated above.
-        let request = unsafe { options_of(header_version, config, series, options) };
+        let request = unsafe { options_of(header_version, config, series, options, run) };
         registry::open_fortran(request, communicator)
     })
 }
@@ -120,7 +125,7 @@ pub unsafe extern "C" fn limno_due(
 ) -> Status {
     enter_run(run, |run| {
         // SAFETY: the host's duty, stated above.
-        let clock = unsafe { checked_clock(clock) }?;
+        let clock = unsafe { checked_clock(clock) }.map_err(|refusal| refusal.fault)?;
         let answer = run.is_due(&clock)?;
         // SAFETY: as above.
         unsafe { write_out("due", due, i32::from(answer)) }
@@ -245,14 +250,15 @@ pub unsafe extern "C" fn limno_lend_array(
 ) -> Status {
     enter_run(run, |run| {
         // SAFETY: the host's duty, stated above.
-        let (species, field, array) = unsafe {
-            (
-                text("species", species)?,
-                text("field", field)?,
-                checked_array(array),
-            )
+        let (species, field) =
+            unsafe { (needed_text("species", species), needed_text("field", field)) };
+        let (species, field) = match (species, field) {
+            (Ok(species), Ok(field)) => (species, field),
+            (species, Err(fault)) => return run.lend_unnamed(species.ok().as_deref(), fault),
+            (Err(fault), _) => return run.lend_unnamed(None, fault),
         };
-        let (species, field) = (species.unwrap_or_default(), field.unwrap_or_default());
+        // SAFETY: as above.
+        let array = unsafe { checked_array(array, List::Read(run.components_of(&field))) };
         run.lend(
             &species,
             &field,
@@ -282,18 +288,14 @@ pub unsafe extern "C" fn limno_describe(
         // SAFETY: the host's duty, stated above.
         let (species, field, array) = unsafe {
             (
-                text("species", species)?,
-                text("field", field)?,
-                checked_array(array)?,
+                needed_text("species", species)?,
+                needed_text("field", field)?,
+                checked_array(array, List::Ignored)?,
             )
         };
-        let separate = array.is_separate();
-        let number = run.describe(
-            &species.unwrap_or_default(),
-            &field.unwrap_or_default(),
-            array.shape,
-            separate,
-        )?;
+        // Before anything is kept, so that a layout that nobody knows the number of is not.
+        place_for("layout", layout)?;
+        let number = run.describe(&species, &field, array.shape, array.is_separate())?;
         // SAFETY: as above.
         unsafe { write_out("layout", layout, number) }
     })
@@ -327,18 +329,19 @@ pub unsafe extern "C" fn limno_lend_again_arrays(
     count: usize,
 ) -> Status {
     enter_run(run, |run| {
-        let components = run.components_of(layout)?;
+        let components = run.arrays_of(layout)?;
         if arrays.is_null() {
             return run.lend_refused(
                 layout,
                 "`arrays` is null; give one pointer per component".to_string(),
             );
         }
+        // The list of a layout without arrays is not read; the layout is refused.
         // SAFETY: the host's duty, stated above: as many pointers as the layout has components.
-        let addresses: Vec<usize> = (0..components)
-            .map(|index| unsafe { *arrays.add(index) } as usize)
-            .collect();
-        run.lend_again(layout, count, Lent::Arrays(&addresses))
+        match unsafe { listed(arrays, components.unwrap_or(0)) } {
+            Ok(addresses) => run.lend_again(layout, count, Lent::Arrays(&addresses)),
+            Err(fault) => run.lend_refused(layout, fault.text),
+        }
     })
 }
 
@@ -366,8 +369,8 @@ pub unsafe extern "C" fn limno_tally(run: *mut LimnoRun, batch: *const Tally) ->
 pub unsafe extern "C" fn limno_sound(run: *mut LimnoRun, species: *const c_char) -> Status {
     enter_run(run, |run| {
         // SAFETY: the host's duty, stated above.
-        let species = unsafe { text("species", species) }?;
-        run.sound(&species.unwrap_or_default())
+        let species = unsafe { needed_text("species", species) }?;
+        run.sound(&species)
     })
 }
 

@@ -9,14 +9,18 @@ use super::types::LimnoRun;
 use crate::run::{self, Fault, Request, Run, Status};
 use crate::team::alone::Alone;
 use std::ffi::c_void;
+use std::sync::atomic::{AtomicU64, Ordering};
 use std::sync::{Arc, PoisonError, RwLock};
 
 struct Place {
     generation: u32,
+    /// How many runs were opened before; places are used again, so their order says nothing.
+    opened: u64,
     run: Option<Arc<Run>>,
 }
 
 static RUNS: RwLock<Vec<Place>> = RwLock::new(Vec::new());
+static OPENED: AtomicU64 = AtomicU64::new(0);
 
 /// Marks a number as a handle of ours: no user-space address has these upper bits.
 const MARK: u64 = 0x4c49_0000_0000_0000;
@@ -46,11 +50,13 @@ fn insert(run: Run) -> Result<*mut LimnoRun, Fault> {
     if free.is_none() {
         runs.push(Place {
             generation: 0,
+            opened: 0,
             run: None,
         });
     }
     let place = &mut runs[index];
     place.generation = place.generation.wrapping_add(1);
+    place.opened = OPENED.fetch_add(1, Ordering::Relaxed);
     place.run = Some(Arc::new(run));
     Ok(handle_of(index, place.generation))
 }
@@ -109,17 +115,16 @@ fn forget(handle: *mut LimnoRun) {
 /// Closes every run, in the order in which they were opened; the same on every rank.
 #[cfg_attr(not(feature = "mpi"), allow(dead_code))]
 fn close_all() {
-    let handles: Vec<*mut LimnoRun> = {
+    let mut handles: Vec<(u64, *mut LimnoRun)> = {
         let runs = RUNS.read().unwrap_or_else(PoisonError::into_inner);
         let open = |(index, place): (usize, &Place)| {
-            place
-                .run
-                .is_some()
-                .then(|| handle_of(index, place.generation))
+            let handle = handle_of(index, place.generation);
+            place.run.is_some().then_some((place.opened, handle))
         };
         runs.iter().enumerate().filter_map(open).collect()
     };
-    for handle in handles {
+    handles.sort_unstable();
+    for (_, handle) in handles {
         // There is nobody to tell: the host has left the run open and ends MPI.
         let _ = super::boundary::plain(|| close(handle));
     }

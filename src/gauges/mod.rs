@@ -85,8 +85,8 @@ pub struct Active {
 ///
 /// # Errors
 /// Every problem in their sections, and every name that is no gauge.
-pub fn build(config: &mut Config, plan: &mut Plan) -> Result<Vec<Active>, Vec<Problem>> {
-    let mut sections = std::mem::take(&mut config.gauges);
+pub fn build(config: &Config, plan: &mut Plan) -> Result<Vec<Active>, Vec<Problem>> {
+    let mut sections = config.gauges.clone();
     let mut problems = Vec::new();
     let mut active = Vec::new();
     for (name, build) in REGISTRY {

@@ -137,6 +137,16 @@ impl TallyBook {
         Ok(())
     }
 
+    /// Adds all that another book of the same channels holds.
+    pub fn add_book(&mut self, other: &TallyBook) {
+        for (mine, theirs) in self.channels.iter_mut().zip(&other.channels) {
+            mine.events += theirs.events;
+            let sums = mine.amounts.iter_mut().chain(&mut mine.elements);
+            sums.zip(theirs.amounts.iter().chain(&theirs.elements))
+                .for_each(|(sum, amount)| sum.merge(amount));
+        }
+    }
+
     /// Forgets everything.
     pub fn clear(&mut self) {
         for channel in &mut self.channels {

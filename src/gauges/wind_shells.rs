@@ -25,6 +25,7 @@ use crate::series::schema::{Column, Kind, ValueType};
 use crate::sweep::{Block, Work};
 use crate::units::Dimension;
 use crate::units::constants::{KILOPARSEC, SOLAR_MASS, YEAR};
+use multiversion::multiversion;
 
 const OUTWARD: usize = 0;
 const INWARD: usize = 1;
@@ -38,10 +39,13 @@ enum Frame {
     Comoving,
 }
 
-/// Edges of shells in host position units at one moment, and the Hubble term.
-struct Shells<'a> {
-    edges: &'a [f64],
+/// The shells of one moment, in host units.
+struct Shells {
+    /// Host lengths in one cm of the edges.
     scale: f64,
+    /// Number of shells that fit into half the periodic box; the others are not measured.
+    fitting: usize,
+    /// The Hubble rate in host velocity per host length; 0 for comoving shells.
     hubble: f64,
 }
 
@@ -307,28 +311,29 @@ impl WindShells {
         std::array::from_fn(|axis| edges.filter(|_| periodic[axis]).map(|edges| edges[axis]))
     }
 
-    /// Turns the edges into host position units at this moment; none when they do not fit in the box.
-    fn shells(&self, moment: &Moment) -> Option<Shells<'_>> {
-        let physical = match self.frame {
-            Frame::Comoving => moment.scale_factor,
-            Frame::Physical => 1.0,
+    fn shells(&self, moment: &Moment) -> Shells {
+        let (physical, hubble) = match self.frame {
+            Frame::Physical => (
+                1.0,
+                moment.hubble * moment.factors.position / moment.factors.velocity,
+            ),
+            Frame::Comoving => (moment.scale_factor, 0.0),
         };
         let scale = physical / moment.factors.position;
-        let hubble = match self.frame {
-            Frame::Physical => moment.hubble * moment.factors.position / moment.factors.velocity,
-            Frame::Comoving => 0.0,
-        };
-        let largest = self.edges.last()? * scale;
-        let fits = self
-            .periods(moment)
+        let shortest = self.periods(moment).into_iter().flatten().reduce(f64::min);
+        let fits =
+            |edge: &f64| shortest.is_none_or(|period| 2.0 * edge * scale <= period * (1.0 + 1e-12));
+        let fitting = self
+            .edges
             .iter()
-            .flatten()
-            .all(|period| 2.0 * largest <= period * (1.0 + 1e-12));
-        fits.then_some(Shells {
-            edges: &self.edges,
+            .skip(1)
+            .take_while(|edge| fits(edge))
+            .count();
+        Shells {
             scale,
+            fitting,
             hubble,
-        })
+        }
     }
 }
 
@@ -341,42 +346,33 @@ impl Gauge for WindShells {
         work: &mut Work,
         sample: &mut Sample,
     ) {
-        let Some(shells) = self.shells(moment) else {
+        let shells = self.shells(moment);
+        if shells.fitting == 0 {
             return;
-        };
-        let [x, y, z] = block.vector(Field::Position);
+        }
+        let position = block.vector(Field::Position);
         let [vx, vy, vz] = block.vector(Field::Velocity);
         let mass = block.scalar(Field::Mass);
         let periods = self.periods(moment);
         let [dx, dy, dz, radius] = work.runs(block.len());
-        for (axis, (from, to)) in [(x, &mut *dx), (y, &mut *dy), (z, &mut *dz)]
-            .into_iter()
-            .enumerate()
-        {
-            let centre = self.position[axis];
+        for (axis, to) in [&mut *dx, &mut *dy, &mut *dz].into_iter().enumerate() {
             match periods[axis] {
-                Some(period) => from
-                    .iter()
-                    .zip(to)
-                    .for_each(|(&at, d)| *d = nearest_image(at - centre, period)),
-                None => from.iter().zip(to).for_each(|(&at, d)| *d = at - centre),
+                Some(period) => nearest_images(position[axis], self.position[axis], period, to),
+                None => differences(position[axis], self.position[axis], to),
             }
         }
-        for index in 0..block.len() {
-            radius[index] =
-                (dx[index] * dx[index] + dy[index] * dy[index] + dz[index] * dz[index]).sqrt();
-        }
-        let first = shells.edges[0] * shells.scale;
-        let last = shells.edges[shells.edges.len() - 1] * shells.scale;
-        for index in 0..block.len() {
-            let r = radius[index];
+        lengths(dx, dy, dz, radius);
+        let edges = &self.edges[..=shells.fitting];
+        let first = edges[0] * shells.scale;
+        let last = edges[shells.fitting] * shells.scale;
+        for (index, &r) in radius.iter().enumerate() {
             if !(first <= r && r < last) {
                 continue;
             }
-            let shell = shells
-                .edges
-                .partition_point(|edge| edge * shells.scale <= r)
-                - 1;
+            let shell = edges[1..shells.fitting]
+                .iter()
+                .filter(|&edge| edge * shells.scale <= r)
+                .count();
             let relative = [
                 vx[index] - self.velocity[0],
                 vy[index] - self.velocity[1],
@@ -398,9 +394,12 @@ impl Gauge for WindShells {
     }
 
     fn enter(&mut self, reading: &Reading, moment: &Moment, entry: &mut Entry) {
-        let shells = self
-            .shells(moment)
-            .filter(|_| reading.presence(Species::Gas) == Presence::Measured);
+        let measured = reading.presence(Species::Gas) == Presence::Measured;
+        let fitting = if measured {
+            self.shells(moment).fitting
+        } else {
+            0
+        };
         let physical = if self.frame == Frame::Comoving {
             moment.scale_factor
         } else {
@@ -415,7 +414,7 @@ impl Gauge for WindShells {
                 Value::Float(inner / KILOPARSEC),
                 Value::Float(outer / KILOPARSEC),
             ];
-            if shells.is_some() {
+            if index < fitting {
                 let rate = moment.factors.mass * moment.factors.velocity / (outer - inner) * YEAR
                     / SOLAR_MASS;
                 let sum = |which: usize| reading.sum(self.sums, index * SUMS + which);
@@ -435,7 +434,26 @@ impl Gauge for WindShells {
     }
 }
 
-/// The distance to the nearest periodic image; any number of boxes away.
-fn nearest_image(distance: f64, period: f64) -> f64 {
-    distance - period * (distance / period).round()
+/// Distances from a centre.
+fn differences(from: &[f64], centre: f64, to: &mut [f64]) {
+    from.iter().zip(to).for_each(|(&at, d)| *d = at - centre);
+}
+
+/// Distances from a centre to the nearest periodic image; any number of boxes away.
+#[multiversion(targets("x86_64+avx+avx2", "aarch64+neon"))]
+fn nearest_images(from: &[f64], centre: f64, period: f64, to: &mut [f64]) {
+    // Adding and subtracting 1.5·2^52 rounds to the nearest whole number, ties to even.
+    const WHOLE: f64 = 6_755_399_441_055_744.0;
+    for (&at, d) in from.iter().zip(to) {
+        let distance = at - centre;
+        *d = distance - period * ((distance / period + WHOLE) - WHOLE);
+    }
+}
+
+/// Lengths of vectors.
+#[multiversion(targets("x86_64+avx+avx2", "aarch64+neon"))]
+fn lengths(x: &[f64], y: &[f64], z: &[f64], to: &mut [f64]) {
+    for (((&x, &y), &z), length) in x.iter().zip(y).zip(z).zip(to) {
+        *length = (x * x + y * y + z * z).sqrt();
+    }
 }

@@ -7,7 +7,18 @@ use super::{Field, Species, View};
 pub struct Lot {
     count: Option<usize>,
     views: [Option<View>; Field::COUNT],
-    refused: bool,
+    /// Fields that could not be lent; lending them rightly later makes it good.
+    missed: [Option<Reason>; Field::COUNT],
+    misnamed: bool,
+}
+
+/// Why a field could not be lent.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+enum Reason {
+    /// Something about this field alone.
+    Own,
+    /// Its count disagrees with that of others, and nobody can say which is right.
+    Count,
 }
 
 impl Lot {
@@ -16,8 +27,14 @@ impl Lot {
     /// # Errors
     /// When its count disagrees with what was lent before; the lot stays as it was.
     pub fn put(&mut self, species: Species, field: Field, view: View) -> Result<(), String> {
+        let others_have_it = self
+            .views
+            .iter()
+            .enumerate()
+            .any(|(index, held)| held.is_some() && index != field as usize);
         if let Some(count) = self.count
             && count != view.count()
+            && others_have_it
         {
             return Err(format!(
                 "{} {}: {} elements are lent, but other fields of {} were lent with {count}; all arrays of a species \
@@ -30,22 +47,41 @@ impl Lot {
         }
         self.count = Some(view.count());
         self.views[field as usize] = Some(view);
+        self.missed[field as usize] = None;
         Ok(())
     }
 
-    /// Notes that something of this species could not be lent: what is measured of it would be incomplete.
-    pub fn refuse(&mut self) {
-        self.refused = true;
+    /// Notes that a field could not be lent.
+    pub fn miss(&mut self, field: Field) {
+        self.missed[field as usize].get_or_insert(Reason::Own);
     }
 
-    /// Could something of this species not be lent?
-    pub fn is_refused(&self) -> bool {
-        self.refused
+    /// Notes that a field could not be lent because its count disagrees.
+    pub fn disagree(&mut self, field: Field) {
+        self.missed[field as usize] = Some(Reason::Count);
+    }
+
+    /// Notes that something was lent under a name that does not exist: what is not lent may be what was meant.
+    pub fn misname(&mut self) {
+        self.misnamed = true;
+    }
+
+    /// Do counts disagree?
+    pub fn disagrees(&self) -> bool {
+        self.missed.contains(&Some(Reason::Count))
+    }
+
+    /// Is a field missing that the host meant to lend, as far as can be told? A field that was lent before
+    /// something went wrong with it is still lent.
+    pub fn lacks(&self, field: Field) -> bool {
+        self.disagrees()
+            || (self.views[field as usize].is_none()
+                && (self.misnamed || self.missed[field as usize].is_some()))
     }
 
     /// Has anything been lent, or failed to be?
     pub fn is_touched(&self) -> bool {
-        self.count.is_some() || self.refused
+        self.count.is_some() || self.misnamed || self.missed.iter().any(Option::is_some)
     }
 
     /// Number of elements; 0 before anything is lent.

@@ -47,6 +47,11 @@ pub struct ArrayShape {
     pub component_stride: isize,
 }
 
+/// Counts beyond this are taken for a mistake: no process holds so many elements, and going through them, even
+/// if they are all one value, would never end.
+const MOST_ELEMENTS: usize = 1 << 40;
+/// No address of a process is beyond it.
+const LAST_ADDRESS: usize = 1 << 56;
 /// Strides beyond this are taken for a mistake: no host has elements of a megabyte.
 const LARGEST_STRIDE: isize = 1 << 20;
 
@@ -108,8 +113,7 @@ impl ArrayShape {
             size
         } else {
             let step = self.component_stride;
-            if step % size != 0 || step == 0 || step.unsigned_abs() > LARGEST_STRIDE.unsigned_abs()
-            {
+            if step % size != 0 || step == 0 || step.unsigned_abs() > LAST_ADDRESS {
                 return wrong(format!(
                     "a component stride of {step} bytes cannot hold {size}-byte numbers; give a multiple of {size}, \
                      for packed components {size}"
@@ -137,8 +141,11 @@ impl ArrayShape {
         }
         let interleaved = !separate_arrays && self.components > 1;
         if interleaved && stride != 0 {
-            let run = self.component_stride.abs() * self.components as isize;
-            let packed_element = stride.abs() >= run;
+            let last = self
+                .component_stride
+                .abs()
+                .checked_mul(self.components as isize - 1);
+            let packed_element = last.is_some_and(|last| last.saturating_add(size) <= stride.abs());
             // Components may also be planes of one array: then elements follow closely and planes are far apart.
             let planes = self.component_stride.abs() > stride.abs();
             if !packed_element && !planes {
@@ -161,9 +168,15 @@ impl View {
     /// address space.
     pub fn new(shape: ArrayShape, count: usize, lent: Lent) -> Result<View, ViewError> {
         shape.check(matches!(lent, Lent::Arrays(_)))?;
+        if count > MOST_ELEMENTS {
+            return wrong(format!(
+                "{count} elements exceed the address space of any process; is the count a negative number?"
+            ));
+        }
         let bases = match lent {
             Lent::Interleaved(address) => {
                 check_range(shape, count, address, shape.components)?;
+                check_planes(shape, count)?;
                 Bases::Interleaved(address)
             }
             Lent::Arrays(addresses) => {
@@ -262,6 +275,26 @@ impl View {
     }
 }
 
+/// Do planes of one array, if that is what the components are, keep clear of each other?
+fn check_planes(shape: ArrayShape, count: usize) -> Result<(), ViewError> {
+    let (step, stride) = (
+        shape.component_stride.unsigned_abs(),
+        shape.stride.unsigned_abs(),
+    );
+    if shape.components == 1 || stride == 0 || step <= stride {
+        return Ok(());
+    }
+    // `check_range` has found this to stay within the address space.
+    let plane = count.saturating_sub(1) * stride + shape.scalar.bytes();
+    if count > 1 && plane > step {
+        return wrong(format!(
+            "{count} elements at a stride of {stride} bytes make planes of {plane} bytes that overlap, as they are only \
+             {step} bytes apart"
+        ));
+    }
+    Ok(())
+}
+
 /// Is the memory from the first to the last number a proper, aligned range?
 fn check_range(
     shape: ArrayShape,
@@ -298,7 +331,7 @@ fn check_range(
     let reach = |offset: isize| {
         address
             .checked_add_signed(offset)
-            .filter(|&end| isize::try_from(end).is_ok() && end > 0)
+            .filter(|&end| end > 0 && end < LAST_ADDRESS)
     };
     let corners = [
         Some(0),

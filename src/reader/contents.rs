@@ -139,8 +139,9 @@ impl Limit {
         time >= self.time || self.time - time < self.tolerance
     }
 
-    fn from(self) -> f64 {
-        self.time - self.tolerance
+    /// Where it begins; of two that begin alike the one that includes its beginning comes first.
+    fn begin(self) -> (f64, f64) {
+        (self.time - self.tolerance, self.time)
     }
 }
 
@@ -162,7 +163,8 @@ pub fn limits(legs: &[LegData]) -> Vec<Option<Limit>> {
                 0.0
             },
         };
-        if first.time.is_finite() && earliest.is_none_or(|earliest| limit.from() < earliest.from())
+        if first.time.is_finite()
+            && earliest.is_none_or(|earliest| limit.begin() < earliest.begin())
         {
             earliest = Some(limit);
         }

@@ -17,7 +17,47 @@ pub struct Clock {
     pub checkpoint: bool,
 }
 
+/// A clock that was refused, and what could be read of it all the same.
+#[derive(Clone, Debug)]
+pub struct Refusal {
+    /// Why.
+    pub fault: Fault,
+    /// The step number.
+    pub step: Option<u64>,
+    /// Are all particles at the time?
+    pub synchronised: Option<bool>,
+    /// Is the host about to write a checkpoint?
+    pub checkpoint: Option<bool>,
+}
+
+impl From<Fault> for Refusal {
+    /// A clock of which nothing could be read.
+    fn from(fault: Fault) -> Refusal {
+        Refusal {
+            fault,
+            step: None,
+            synchronised: None,
+            checkpoint: None,
+        }
+    }
+}
+
+impl Refusal {
+    /// A clock that could be read and is wrong.
+    pub fn of(clock: &Clock, fault: Fault) -> Refusal {
+        Refusal {
+            fault,
+            step: Some(clock.step),
+            synchronised: Some(clock.synchronised),
+            checkpoint: Some(clock.checkpoint),
+        }
+    }
+}
+
 impl Clock {
+    /// The largest step number; the one beyond is what -1 becomes on its way here.
+    pub const LARGEST_STEP: u64 = u64::MAX - 1;
+
     /// Checks the numbers in themselves and against the clock of the step before.
     ///
     /// # Errors
@@ -29,6 +69,12 @@ impl Clock {
                 format!("clock of step {}: {text}", self.step),
             )
         };
+        if self.step > Clock::LARGEST_STEP {
+            return wrong(format!(
+                "the step number is the largest there is, as if -1 were given; expected at most {}",
+                Clock::LARGEST_STEP
+            ));
+        }
         if !self.time.is_finite() {
             return wrong(format!("the time is {}, not a finite number", self.time));
         }

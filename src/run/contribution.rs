@@ -25,6 +25,9 @@ pub enum Condition {
     Asleep,
     /// Closing the run.
     Closing,
+    /// Called to enter without knowing which step, or whether it is measured: stands for the step that the others
+    /// contribute to, whichever it is.
+    InDoubt,
 }
 
 /// The clock words of a contribution.
@@ -38,6 +41,17 @@ pub struct StepWords {
     pub has_interval: bool,
 }
 
+/// What the host said of the step, of which the row tells the largest of all ranks.
+#[derive(Clone, Copy, Debug, Default, PartialEq)]
+pub struct HostWords {
+    /// Steps marked since the last row, this one included.
+    pub steps: u64,
+    /// Is the host about to write a checkpoint?
+    pub checkpoint: bool,
+    /// Length of the step; 0 when not known.
+    pub step_length: f64,
+}
+
 /// Where the words of a contribution stand.
 pub struct Words {
     /// The whole buffer.
@@ -46,6 +60,7 @@ pub struct Words {
     pub packing: Packing,
     ranks: Part,
     clock: Part,
+    host: Part,
     cost: Part,
     needs: Part,
     not_finite: Part,
@@ -54,11 +69,11 @@ pub struct Words {
     pub checked: Vec<(Species, Field)>,
 }
 
-const CONDITIONS: usize = 4;
-const TIMED: usize = 4;
-const WITHOUT_INTERVAL: usize = 5;
-const LEFT_OUT: usize = 6;
-const RANK_CELLS: usize = 7;
+const CONDITIONS: usize = 5;
+const TIMED: usize = 5;
+const WITHOUT_INTERVAL: usize = 6;
+const LEFT_OUT: usize = 7;
+const RANK_CELLS: usize = 8;
 
 impl Words {
     /// The words of the gauges of a plan.
@@ -78,6 +93,7 @@ impl Words {
         let mut layout = Layout::default();
         let ranks = layout.add(Kind::Sum, 1, RANK_CELLS);
         let clock = layout.add(Kind::Max, 1, 4);
+        let host = layout.add(Kind::Max, 1, 3);
         let cost = layout.add(Kind::Max, 1, 2);
         let needs = layout.add(
             Kind::Sum,
@@ -92,6 +108,7 @@ impl Words {
             packing,
             ranks,
             clock,
+            host,
             cost,
             needs,
             not_finite,
@@ -120,6 +137,17 @@ impl Words {
         let ranks = &mut buffer[self.layout.range(self.ranks)];
         ranks[TIMED] = u64::from(words.time.is_some());
         ranks[WITHOUT_INTERVAL] = u64::from(!words.has_interval);
+    }
+
+    /// Says what the host said of the step.
+    pub fn put_host(&self, buffer: &mut [u64], words: HostWords) {
+        // The bits of floats that are not negative stand in the order of their values.
+        let length = words.step_length.abs().to_bits();
+        buffer[self.layout.range(self.host)].copy_from_slice(&[
+            words.steps,
+            u64::from(words.checkpoint),
+            length,
+        ]);
     }
 
     /// Says what the library and the host's steps have cost this rank since its last row, in ns.
@@ -166,6 +194,7 @@ impl Words {
     pub fn read(&self, buffer: &[u64]) -> Combined {
         let ranks = &buffer[self.layout.range(self.ranks)];
         let clock = &buffer[self.layout.range(self.clock)];
+        let host = &buffer[self.layout.range(self.host)];
         let cost = &buffer[self.layout.range(self.cost)];
         let needs = &buffer[self.layout.range(self.needs)];
         let text = &buffer[self.layout.range(self.text)];
@@ -178,6 +207,11 @@ impl Words {
             steps: range(clock[0], clock[1]).map(|(low, high)| (low, high - 1)),
             times: range(clock[2], clock[3])
                 .map(|(low, high)| (from_order_key(low), from_order_key(high))),
+            host: HostWords {
+                steps: host[0],
+                checkpoint: host[1] != 0,
+                step_length: f64::from_bits(host[2]),
+            },
             library_nanoseconds: cost[0],
             host_nanoseconds: cost[1],
             needs: needs
@@ -236,6 +270,8 @@ pub struct Combined {
     pub steps: Option<(u64, u64)>,
     /// Earliest and latest time.
     pub times: Option<(f64, f64)>,
+    /// What the host said, of all ranks the largest.
+    pub host: HostWords,
     /// Largest time spent in the library since the last row.
     pub library_nanoseconds: u64,
     /// Largest time spent on steps since the last row, the library's included.
@@ -322,6 +358,7 @@ mod tests {
             (7, 0.5, Condition::Closing, Some("closed the run while")),
             (7, 0.5, Condition::Asleep, Some("fell asleep")),
             (7, 0.5, Condition::InError, None),
+            (7, 0.5, Condition::InDoubt, None),
         ] {
             let mut all = contribution(&words, 7, 0.5, Condition::Well);
             combine(&contribution(&words, step, time, condition), &mut all);
@@ -333,6 +370,24 @@ mod tests {
                     "{found:?}"
                 ),
             }
+        }
+    }
+
+    #[test]
+    fn a_rank_in_doubt_does_not_keep_the_others_from_closing() {
+        let words = words();
+        let alone = |condition| {
+            let mut buffer = Vec::new();
+            words.layout.clear(&mut buffer);
+            words.put_condition(&mut buffer, condition, 0);
+            buffer
+        };
+        for (condition, is_fatal) in [(Condition::InDoubt, false), (Condition::InError, true)] {
+            let mut all = alone(Condition::Closing);
+            combine(&alone(condition), &mut all);
+            let combined = words.read(&all);
+            assert_eq!(combined.reason_to_sleep().is_some(), is_fatal);
+            assert_eq!(combined.ranks(Condition::Closing), 1);
         }
     }
 

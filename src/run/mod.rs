@@ -5,28 +5,33 @@
 //! taken from combined words only, so that no rank ever waits for one that has decided otherwise.
 
 mod clock;
+mod closing;
 mod contribution;
 mod core;
+mod entering;
 mod history;
+mod marking;
 mod opening;
 mod rows;
 mod status;
 
-pub use clock::Clock;
+pub use clock::{Clock, Refusal};
 pub use opening::{ConfigSource, Request, open};
 pub use status::{Fault, Status};
 
-use self::core::Core;
+use self::core::{Core, Missed};
 use crate::gauges::{TallyBatch, TallyBook};
 use crate::lend::{ArrayShape, Field, Lent, SPECIES, Species, nearest};
 use std::sync::atomic::{AtomicU64, Ordering};
-use std::sync::{Mutex, MutexGuard, PoisonError};
+use std::sync::{Arc, Mutex, MutexGuard, OnceLock, PoisonError};
 use std::time::Instant;
 
 /// A run. Shared between the threads of a host; all but tallies is one call at a time.
 pub struct Run {
     core: Mutex<Core>,
-    tallies: Mutex<TallyBook>,
+    tallies: Arc<Mutex<TallyBook>>,
+    /// Why the run sleeps, for calls that do not wait for others to end.
+    sleeps: Arc<OnceLock<String>>,
     elements: usize,
     last_error: Mutex<String>,
     /// Time this rank has spent in calls, in ns.
@@ -39,11 +44,13 @@ fn lock<T>(mutex: &Mutex<T>) -> MutexGuard<'_, T> {
 }
 
 impl Run {
-    fn new(core: Core, tallies: TallyBook) -> Run {
+    fn new(core: Core, tallies: Arc<Mutex<TallyBook>>, sleeps: Arc<OnceLock<String>>) -> Run {
+        let elements = lock(&tallies).elements();
         Run {
-            elements: tallies.elements(),
+            elements,
             core: Mutex::new(core),
-            tallies: Mutex::new(tallies),
+            tallies,
+            sleeps,
             last_error: Mutex::new(String::new()),
             spent: AtomicU64::new(0),
         }
@@ -99,7 +106,7 @@ impl Run {
     ///
     /// # Errors
     /// A clock that cannot be right, or a step marked before and not yet entered.
-    pub fn mark(&self, clock: Result<Clock, Fault>) -> Result<(), Fault> {
+    pub fn mark(&self, clock: Result<Clock, Refusal>) -> Result<(), Fault> {
         self.call_together(|core| core.mark(clock))
     }
 
@@ -115,21 +122,34 @@ impl Run {
         array: Result<(ArrayShape, Lent), Fault>,
     ) -> Result<(), Fault> {
         self.call(|core| {
-            let name = species;
-            let species = find_species(name);
             if !core.is_measuring()? {
                 return Ok(());
             }
-            let found = species
-                .clone()
-                .and_then(|species| Ok((species, find_field(field)?)));
-            let lent = found.and_then(|(species, field)| {
-                let (shape, lent) = array?;
-                core.lend(species, field, count, shape, lent)
-            });
-            // A mistyped species most likely meant the one with the nearest name: nothing is measured of half of it.
-            let meant = species.ok().or_else(|| nearest_species(name));
-            lent.map_err(|fault| core.refuse(meant, fault))
+            let name = species;
+            let species = find_species(name).map_err(|fault| {
+                // A mistyped species most likely meant the one with the nearest name.
+                core.miss(Missed::Name(nearest_species(name)), fault)
+            })?;
+            let field =
+                find_field(field).map_err(|fault| core.miss(Missed::Name(Some(species)), fault))?;
+            let (shape, lent) =
+                array.map_err(|fault| core.miss(Missed::Field(species, field), fault))?;
+            core.lend(species, field, count, shape, lent)
+        })
+    }
+
+    /// Notes that something was lent under a name that could not be read; `species`, where that could.
+    ///
+    /// # Errors
+    /// Always: the fault that describes it, or a step not marked.
+    pub fn lend_unnamed(&self, species: Option<&str>, fault: Fault) -> Result<(), Fault> {
+        self.call(|core| {
+            if !core.is_measuring()? {
+                return Ok(());
+            }
+            let meant =
+                species.and_then(|name| Species::find(name).or_else(|| nearest_species(name)));
+            Err(core.miss(Missed::Name(meant), fault))
         })
     }
 
@@ -150,15 +170,14 @@ impl Run {
     /// Lends with a layout described before.
     ///
     /// # Errors
-    /// As [`Run::lend`], and a layout that was never described.
+    /// As [`Run::lend`], and a layout that was never described or is of another kind.
     pub fn lend_again(&self, layout: i32, count: usize, lent: Lent) -> Result<(), Fault> {
         self.call(|core| {
-            let (species, field, shape) = core.layout(layout)?;
+            core.layout(layout)?;
             if !core.is_measuring()? {
                 return Ok(());
             }
-            core.lend(species, field, count, shape, lent)
-                .map_err(|fault| core.refuse(Some(species), fault))
+            core.lend_again(layout, count, lent)
         })
     }
 
@@ -168,18 +187,31 @@ impl Run {
     /// Always: the fault that describes it.
     pub fn lend_refused(&self, layout: i32, why: String) -> Result<(), Fault> {
         self.call(|core| {
-            let (species, field, _) = core.layout(layout)?;
+            let layout = core.layout(layout)?;
+            if !core.is_measuring()? {
+                return Ok(());
+            }
+            let (species, field) = (layout.species, layout.field);
             let text = format!("{} {}: {why}", species.name(), field.name());
-            Err(core.refuse(Some(species), Fault::new(Status::BadArgument, text)))
+            let fault = Fault::new(Status::BadArgument, text);
+            Err(core.miss(Missed::Field(species, field), fault))
         })
     }
 
-    /// Number of components of a layout described before.
+    /// Number of arrays that a layout described before has; none when its components are in one.
     ///
     /// # Errors
     /// A layout that was never described.
-    pub fn components_of(&self, layout: i32) -> Result<usize, Fault> {
-        self.call(|core| Ok(core.layout(layout)?.2.components))
+    pub fn arrays_of(&self, layout: i32) -> Result<Option<usize>, Fault> {
+        self.call(|core| {
+            let layout = core.layout(layout)?;
+            Ok(layout.separate.then_some(layout.shape.components))
+        })
+    }
+
+    /// Numbers that an element of a field has; none for a field that does not exist.
+    pub fn components_of(&self, field: &str) -> Option<usize> {
+        Field::find(field).map(|field| field.components(self.elements))
     }
 
     /// Posts a batch of events; from any thread.
@@ -188,6 +220,9 @@ impl Run {
     /// An unknown channel, a number that is not finite, a run that sleeps.
     pub fn tally(&self, channel: &str, batch: &TallyBatch) -> Result<(), Fault> {
         let start = Instant::now();
+        if let Some(why) = self.sleeps.get() {
+            return self.note(Fault::err(Status::Asleep, format!("the run sleeps: {why}")));
+        }
         let mut book = lock(&self.tallies);
         let index = book
             .channels()
@@ -236,7 +271,7 @@ impl Run {
     /// # Errors
     /// See the header; the row is entered unless the run sleeps.
     pub fn enter(&self) -> Result<(), Fault> {
-        self.call_together(|core| core.enter(&self.tallies))
+        self.call_together(Core::enter)
     }
 
     /// Completes all rows and ends the run.
@@ -284,9 +319,13 @@ fn unknown<'a>(
         Some(name) => format!("did you mean {name:?}?"),
         None => format!("known: {}", known.collect::<Vec<_>>().join(", ")),
     };
+    // A text that does not seem to end is none that a person wants to read in full.
+    let end = given.floor_char_boundary(64);
+    let more = if end < given.len() { " and so on" } else { "" };
+    let given = &given[..end];
     Fault::new(
         Status::UnknownName,
-        format!("there is no {what} {given:?}; {hint}{note}"),
+        format!("there is no {what} {given:?}{more}; {hint}{note}"),
     )
 }
 

@@ -12,13 +12,17 @@ use crate::series::{Opening, Series};
 use crate::sweep::Sweep;
 use crate::team::cells::{Kind, Layout};
 use crate::team::{Team, TeamError};
+use std::io::Read;
 use std::path::Path;
+use std::sync::{Arc, Mutex, OnceLock};
 use std::time::Duration;
 
 /// How long a rank waits for the others to open.
 const PATIENCE: Duration = Duration::from_secs(600);
 /// Problems of a config that an error text lists.
 const LISTED_PROBLEMS: usize = 8;
+/// Bytes of a config that are read; the parser refuses more than it can be.
+const MOST_BYTES: u64 = 2 << 20;
 /// Bytes of a fault's text that reach the other ranks.
 const TEXT_BYTES: usize = 4096;
 
@@ -152,14 +156,18 @@ fn read_config(request: &Request) -> Result<String, Fault> {
         return Ok(text.clone());
     }
     let path = &request.config.path;
-    let bytes = std::fs::read(path).map_err(|error| {
-        Fault::new(
-            Status::BadConfig,
-            format!(
-                "the config {path:?} cannot be read: {error}; give the path of a limnograph.toml"
-            ),
-        )
-    })?;
+    // What goes on beyond the largest config, such as a device, is refused by its length when it is parsed.
+    let mut bytes = Vec::new();
+    std::fs::File::open(path)
+        .and_then(|file| file.take(MOST_BYTES).read_to_end(&mut bytes))
+        .map_err(|error| {
+            Fault::new(
+                Status::BadConfig,
+                format!(
+                    "the config {path:?} cannot be read: {error}; give the path of a limnograph.toml"
+                ),
+            )
+        })?;
     String::from_utf8(bytes).map_err(|_| {
         Fault::new(
             Status::BadConfig,
@@ -245,10 +253,9 @@ struct Prepared {
 
 impl Prepared {
     fn new(path: &str, text: &str, threads: usize) -> Result<Prepared, Fault> {
-        let mut config = Config::parse(text, path).map_err(|problems| bad_config(&problems))?;
+        let config = Config::parse(text, path).map_err(|problems| bad_config(&problems))?;
         let mut plan = Plan::new(rows::own_tables(&config));
-        let gauges =
-            gauges::build(&mut config, &mut plan).map_err(|problems| bad_config(&problems))?;
+        let gauges = gauges::build(&config, &mut plan).map_err(|problems| bad_config(&problems))?;
         let words = Words::new(&plan);
         plan.tables[0].columns.extend(rows::closing_columns(&words));
         let threads = if threads > 0 {
@@ -275,8 +282,10 @@ impl Prepared {
             sweep,
             words,
         } = self;
-        let tallies = TallyBook::new(&config);
-        let scribe = series.map(Scribe::new);
+        let tallies = Arc::new(Mutex::new(TallyBook::new(&config)));
+        let sleeps = Arc::new(OnceLock::new());
+        let history = Arc::new(history);
+        let scribe = series.map(|series| Scribe::new(series, history.clone()));
         Run::new(
             Core::new(Parts {
                 team,
@@ -287,8 +296,11 @@ impl Prepared {
                 words,
                 scribe,
                 history,
+                tallies: tallies.clone(),
+                sleeps: sleeps.clone(),
             }),
             tallies,
+            sleeps,
         )
     }
 }

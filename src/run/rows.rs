@@ -1,6 +1,5 @@
 //! From combined sums to rows: the columns that every run has, those of the gauges, and the events.
 
-use super::clock::Clock;
 use super::contribution::{Combined, Condition, Words};
 use super::history::History;
 use super::status::{Fault, Status};
@@ -12,6 +11,7 @@ use crate::series::schema::{Column, Kind, Table, ValueType};
 use crate::series::{Series, SeriesError, Trouble};
 use crate::units::constants::{GIGAYEAR, MEGAYEAR, YEAR};
 use std::collections::HashSet;
+use std::sync::Arc;
 use std::time::{Duration, SystemTime, UNIX_EPOCH};
 
 /// Number of the run table.
@@ -26,12 +26,8 @@ const CLOSE_PATIENCE: Duration = Duration::from_secs(10);
 /// What rank 0 remembers of a step until its reduction is complete.
 #[derive(Clone, Debug)]
 pub(super) struct Context {
-    /// The clock, where this rank accepted it.
-    pub clock: Option<Clock>,
-    /// The moment, likewise.
+    /// The moment, where this rank accepted the clock.
     pub moment: Option<Moment>,
-    /// Steps marked since the last row, this one included.
-    pub steps: u64,
 }
 
 /// The tables of every run, before those of the gauges: the run table's first columns, and the events.
@@ -227,28 +223,32 @@ pub(super) struct Scribe {
     series: Series,
     /// Gaps already told as an event.
     told: HashSet<(usize, Species, Option<Field>)>,
-    has_entered: bool,
+    /// Rows of earlier legs, until the first row of this one.
+    history: Option<Arc<History>>,
     last_step: u64,
     last_time: f64,
     durable: Result<(), SeriesError>,
     complaint: Option<SeriesError>,
+    /// Was the disk refusing when it was last asked?
+    is_failing: bool,
 }
 
 impl Scribe {
-    pub fn new(series: Series) -> Scribe {
+    pub fn new(series: Series, history: Arc<History>) -> Scribe {
         Scribe {
             series,
             told: HashSet::new(),
-            has_entered: false,
+            history: Some(history),
             last_step: 0,
             last_time: 0.0,
             durable: Ok(()),
             complaint: None,
+            is_failing: false,
         }
     }
 
     /// Lets the gauges of the first row of a leg take up what earlier legs left.
-    pub fn take_up(&mut self, history: &History, first: &Clock, gauges: &mut [Active]) {
+    fn take_up(&mut self, history: &History, first: &Moment, gauges: &mut [Active]) {
         let Some(state) = history.last_state_before(first.time, first.step_length) else {
             return;
         };
@@ -279,6 +279,10 @@ impl Scribe {
             return;
         };
         (self.last_step, self.last_time) = (moment.step, moment.time);
+        let is_first = self.history.is_some();
+        if let Some(history) = self.history.take() {
+            self.take_up(&history, &moment, gauges);
+        }
         let mut record = self.series.spare();
         record.rows.clear();
         record.carry.clear();
@@ -286,7 +290,7 @@ impl Scribe {
         record.time = moment.time;
         record.step_length = moment.step_length;
 
-        let mut run = clock_values(config, context, &moment);
+        let mut run = clock_values(config, combined, &moment);
         let mut rows = Vec::new();
         let mut events = Vec::new();
         let mut states = combined.needs.iter().copied();
@@ -314,7 +318,8 @@ impl Scribe {
                 .map(|&count| Value::Unsigned(count)),
         );
         run.push(Value::Unsigned(combined.left_out));
-        run.push(Value::Unsigned(combined.ranks(Condition::InError)));
+        let in_error = combined.ranks(Condition::InError) + combined.ranks(Condition::InDoubt);
+        run.push(Value::Unsigned(in_error));
         run.push(Value::Float(
             SystemTime::now()
                 .duration_since(UNIX_EPOCH)
@@ -336,11 +341,10 @@ impl Scribe {
                 .into_iter()
                 .map(|(source, text)| event_row(moment.step, moment.time, source, text)),
         );
-        let is_checkpoint = context.clock.is_some_and(|clock| clock.checkpoint);
-        if is_checkpoint || !self.has_entered {
+        let is_checkpoint = combined.host.checkpoint;
+        if is_checkpoint || is_first {
             write_carry(gauges, &mut record.carry);
         }
-        self.has_entered = true;
         if is_checkpoint {
             self.durable = self.series.enter_durably(record, DURABLE_PATIENCE);
         } else if let Err(error) = self.series.enter(record) {
@@ -406,12 +410,23 @@ impl Scribe {
         std::mem::replace(&mut self.durable, Ok(())).map_err(|error| fault(&error))
     }
 
-    /// What the disk refused since this was last asked.
+    /// What the disk refused since this was last asked; while it goes on refusing, that is told once.
     pub fn complain_once(&mut self) -> Result<(), Fault> {
-        match self.complaint.take() {
-            Some(error) => Err(fault(&error)),
-            None => Ok(()),
+        if let Some(error) = self.complaint.take() {
+            return Err(fault(&error));
         }
+        let status = self.series.status();
+        let begins = status.is_failing && !self.is_failing;
+        self.is_failing = status.is_failing;
+        if !begins {
+            return Ok(());
+        }
+        let text = format!(
+            "the disk refuses rows ({}); {} wait in memory and are written as soon as it allows",
+            status.last_error.as_deref().unwrap_or("unknown"),
+            status.rows_waiting
+        );
+        Fault::err(Status::Disk, text)
     }
 
     pub fn written_and_lost(&self) -> (u64, u64) {
@@ -478,21 +493,22 @@ fn moment_of(config: &Config, context: &Context, combined: &Combined) -> Option<
             super::core::moment_without_history(config, step, time).ok()?
         }
     };
-    if combined.without_interval > 0 {
+    moment.step_length = combined.host.step_length;
+    let in_doubt = combined.ranks(Condition::InDoubt);
+    if combined.without_interval + in_doubt > 0 {
         // Some rank could not tell what was born since the last row.
         moment.interval = None;
     }
     Some(moment)
 }
 
-fn clock_values(config: &Config, context: &Context, moment: &Moment) -> Vec<Value> {
-    let checkpoint = context.clock.is_some_and(|clock| clock.checkpoint);
+fn clock_values(config: &Config, combined: &Combined, moment: &Moment) -> Vec<Value> {
     let mut values = vec![
         Value::Unsigned(moment.step),
         Value::Float(moment.time),
         Value::Float(moment.step_length),
-        Value::Unsigned(context.steps),
-        Value::Unsigned(u64::from(checkpoint)),
+        Value::Unsigned(combined.host.steps),
+        Value::Unsigned(u64::from(combined.host.checkpoint)),
     ];
     if config.expansion.cosmology().is_some() {
         values.push(Value::Float(moment.scale_factor));

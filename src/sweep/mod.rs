@@ -83,18 +83,24 @@ impl Sweep {
         let mut fields: Vec<Field> = Vec::with_capacity(Field::COUNT);
         let mut ready: Vec<(usize, Vec<Field>)> = Vec::with_capacity(gauges.len());
         for (index, needs) in plan.needs.iter().enumerate() {
-            let mut complete = !lot.is_refused();
+            let mut complete = true;
             let mut wanted = Vec::new();
             for (need, state) in needs.iter().zip(&mut self.needs[index]) {
                 if need.species != species {
                     continue;
                 }
-                let lent = lot.view(need.field).is_some() && !lot.is_refused();
                 state.soundings += 1;
-                if lot.is_refused() || (lot.count() > 0 && !lent) {
+                if lot.lacks(need.field) {
+                    // Also where the gauge could do without the field: the host meant to lend it.
+                    state.with += u64::from(need.optional);
                     state.without += 1;
-                    complete &= need.optional && !lot.is_refused();
-                } else if lot.count() > 0 {
+                    complete = false;
+                } else if lot.count() == 0 {
+                    continue;
+                } else if lot.view(need.field).is_none() {
+                    state.without += 1;
+                    complete &= need.optional;
+                } else {
                     state.with += 1;
                     wanted.push(need.field);
                 }

@@ -314,7 +314,8 @@ pub fn record(step: u64) -> Record {
     }
 }
 
-fn event(step: u64, gauge: &str, note: &str) -> Row {
+/// A row of the table of events.
+pub fn event(step: u64, gauge: &str, note: &str) -> Row {
     let values = vec![
         Value::Unsigned(step),
         Value::Float(time_of(step)),

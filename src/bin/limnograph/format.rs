@@ -59,6 +59,7 @@ pub fn value(value: &Value, kind: Kind) -> String {
 
 /// A unit string as people write it: `Msun/yr/Mpc^3` for `solMass.yr**-1.Mpc**-3`.
 pub fn unit(unit: &str) -> String {
+    let unit = super::screen::harmless(unit);
     let mut above = Vec::new();
     let mut below = Vec::new();
     for factor in unit.split('.').filter(|factor| !factor.is_empty()) {

@@ -1,9 +1,10 @@
 //! The run table, gauge by gauge: latest values, units, how they went, and why some were not measured.
 
 use crate::format;
+use crate::notes::Notes;
 use crate::screen::{Screen, harmless};
 use crate::trend;
-use limnograph::reader::{ColumnValues, SeriesReader, TableView};
+use limnograph::reader::{ColumnValues, TableView};
 use limnograph::series::record::Value;
 use limnograph::series::schema::{Column, Kind, ValueType};
 
@@ -20,23 +21,27 @@ pub struct Section {
 /// Gauges of the library itself; they are told in words at the top.
 pub const OWN_GAUGES: [&str; 2] = ["clock", "library"];
 
-/// One section for each gauge that has columns in the run table, in the order of the table.
-pub fn sections(reader: &SeriesReader, run: &TableView<'_>, screen: &Screen) -> Vec<Section> {
+/// The gauges that have columns in a table, in its order; without the library's own.
+pub fn names<'a>(table: &'a TableView<'_>) -> Vec<&'a str> {
     let mut names: Vec<&str> = Vec::new();
-    for merged in run.columns() {
+    for merged in table.columns() {
         let gauge = merged.column.gauge.as_str();
         if !names.contains(&gauge) && !OWN_GAUGES.contains(&gauge) {
             names.push(gauge);
         }
     }
-    let reasons = Reasons::read(reader);
     names
+}
+
+/// One section for each gauge of the run table.
+pub fn sections(run: &TableView<'_>, notes: &Notes, screen: &Screen) -> Vec<Section> {
+    names(run)
         .into_iter()
-        .map(|name| section(run, name, &reasons, screen))
+        .map(|name| section(run, name, notes, screen))
         .collect()
 }
 
-fn section(run: &TableView<'_>, gauge: &str, reasons: &Reasons, screen: &Screen) -> Section {
+fn section(run: &TableView<'_>, gauge: &str, notes: &Notes, screen: &Screen) -> Section {
     let layout = Layout::for_columns(run, screen);
     let mut lines = Vec::new();
     let mut nulls: Vec<&Column> = Vec::new();
@@ -63,11 +68,11 @@ fn section(run: &TableView<'_>, gauge: &str, reasons: &Reasons, screen: &Screen)
             screen,
             first,
             nulls.len() - 1,
-            &reasons.of(gauge),
+            &notes.about(gauge),
         ));
     }
     Section {
-        title: screen.bold(&screen.cut(gauge, screen.width)),
+        title: screen.bold(&screen.cut(&harmless(gauge), screen.width)),
         legend: Vec::new(),
         lines,
     }
@@ -162,45 +167,4 @@ fn unmeasured(screen: &Screen, first: &Column, others: usize, reasons: &[&str]) 
         .iter()
         .map(|line| screen.faint(&screen.cut(line, screen.width)))
         .collect()
-}
-
-/// What the table of events says about each gauge.
-struct Reasons {
-    /// Source and text, in the order of the rows.
-    notes: Vec<(String, String)>,
-}
-
-/// The table in which the library says what it has to say besides numbers.
-const EVENTS: &str = "events";
-
-impl Reasons {
-    /// In the table of events the texts of a row are whom it concerns and what happened, in this order.
-    fn read(reader: &SeriesReader) -> Reasons {
-        let mut notes = Vec::new();
-        if let Some(events) = reader.table(EVENTS) {
-            let texts: Vec<ColumnValues> = (0..events.columns().len())
-                .map(|column| events.column_rows(column, 0..events.rows()))
-                .filter(|values| matches!(values, ColumnValues::Text(_)))
-                .collect();
-            if let [ColumnValues::Text(sources), ColumnValues::Text(texts), ..] = texts.as_slice() {
-                notes = sources
-                    .iter()
-                    .zip(texts.iter())
-                    .filter_map(|(source, text)| Some((source?.clone(), text?.clone())))
-                    .collect();
-            }
-        }
-        Reasons { notes }
-    }
-
-    /// What has been said about a gauge, each thing once.
-    fn of(&self, gauge: &str) -> Vec<&str> {
-        let mut texts: Vec<&str> = Vec::new();
-        for (source, text) in &self.notes {
-            if source == gauge && !texts.contains(&text.as_str()) {
-                texts.push(text);
-            }
-        }
-        texts
-    }
 }

@@ -250,7 +250,12 @@ impl Items {
         if !units.is_empty() {
             legend.push(screen.faint(&units));
         }
-        let title = screen.bold(&screen.cut(&harmless(table.name()), screen.width));
+        let by: Vec<&str> = keys
+            .iter()
+            .map(|&key| described(key).name.as_str())
+            .collect();
+        let title = harmless(&format!("{}, by {}", table.name(), by.join(" and ")));
+        let title = screen.bold(&screen.cut(&title, screen.width));
         Section {
             title,
             legend,

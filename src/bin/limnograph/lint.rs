@@ -34,14 +34,14 @@ pub fn check(path: &Path, out: &mut dyn Write) -> Result<u8, Failure> {
 
 /// Builds what the library would build of the config, gauges included.
 fn understand(text: &str, name: &str) -> Result<(Config, Vec<Table>), Vec<Problem>> {
-    let mut config = Config::parse(text, name)?;
+    let config = Config::parse(text, name)?;
     let run = Table {
         name: "run".to_string(),
         description: String::new(),
         columns: Vec::new(),
     };
     let mut plan = Plan::new(vec![run]);
-    gauges::build(&mut config, &mut plan)?;
+    gauges::build(&config, &mut plan)?;
     Ok((config, plan.tables))
 }
 

@@ -6,6 +6,7 @@ mod format;
 mod gauges;
 mod items;
 mod lint;
+mod notes;
 mod open;
 mod screen;
 mod sight;

@@ -3,6 +3,7 @@
 use crate::format;
 use crate::gauges::{self, Section};
 use crate::items;
+use crate::notes::Notes;
 use crate::open::Failure;
 use crate::screen::{Screen, harmless};
 use limnograph::reader::{SeriesReader, TableView, extent};
@@ -29,28 +30,17 @@ pub fn show(reader: &SeriesReader, screen: &Screen, out: &mut dyn Write) -> Resu
             reader.path().display()
         )));
     };
-    let head = head(reader, &run, screen);
+    let notes = Notes::read(reader);
+    let head = head(reader, &run, &notes, screen);
     let mut sections = Vec::new();
     if run.rows() > 0 {
-        sections = gauges::sections(reader, &run, screen);
+        sections = gauges::sections(&run, &notes, screen);
         let tables = reader.tables();
         let tables = tables
             .iter()
             .filter(|&&name| name != "run")
             .filter_map(|name| reader.table(name));
-        for section in tables.filter_map(|table| items::section(&table, &run, screen)) {
-            // A gauge's own table stands with its columns of the run.
-            match sections
-                .iter_mut()
-                .find(|known| known.title == section.title)
-            {
-                Some(known) => {
-                    known.lines.extend(section.legend);
-                    known.lines.extend(section.lines);
-                }
-                None => sections.push(section),
-            }
-        }
+        sections.extend(tables.filter_map(|table| items::section(&table, &run, screen)));
     }
     let used = head.len();
     for line in head {
@@ -60,7 +50,7 @@ pub fn show(reader: &SeriesReader, screen: &Screen, out: &mut dyn Write) -> Resu
     write_sections(&sections, room, screen, out)
 }
 
-fn head(reader: &SeriesReader, run: &TableView<'_>, screen: &Screen) -> Vec<String> {
+fn head(reader: &SeriesReader, run: &TableView<'_>, notes: &Notes, screen: &Screen) -> Vec<String> {
     let path = reader
         .path()
         .file_name()
@@ -82,6 +72,18 @@ fn head(reader: &SeriesReader, run: &TableView<'_>, screen: &Screen) -> Vec<Stri
             .map(|line| screen.bold(&screen.cut(&format!(" {line}"), screen.width))),
     );
     lines.extend(notices(run).map(|line| screen.cut(&format!(" {line}"), screen.width)));
+    let mut known = gauges::names(run);
+    let tables = reader.tables();
+    let tables: Vec<_> = tables
+        .iter()
+        .filter_map(|name| reader.table(name))
+        .collect();
+    known.extend(tables.iter().flat_map(gauges::names));
+    lines.extend(
+        notes
+            .last_but(&known)
+            .map(|note| screen.cut(&format!(" {}", harmless(&note)), screen.width)),
+    );
     lines
 }
 
@@ -122,7 +124,7 @@ fn clock(reader: &SeriesReader, run: &TableView<'_>) -> String {
         let value = run.column_rows(index, last..last + 1).value(0);
         if value != Value::Null {
             let number = format::with_unit(&format::value(&value, column.kind), &column.unit);
-            parts.push(format!("{} {number}", column.name));
+            parts.push(harmless(&format!("{} {number}", column.name)));
         }
     }
     parts.join("   ")

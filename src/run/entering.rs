@@ -1,0 +1,448 @@
+//! The end of a step: this rank's contribution, and taking in what all have contributed.
+//!
+//! Every rank takes part in every reduction, also when it is in error. One that does not know which step the
+//! others are at, because its host entered without a mark or gave a clock that could not be read, contributes in
+//! doubt: its part stands for whichever step the others contribute to. Before its next part it waits to learn
+//! which step that was. That wait is safe: the others come to that step without waiting for this rank.
+
+use super::clock::Clock;
+use super::contribution::{Combined, Condition, HostWords, StepWords};
+use super::core::{Core, Stage};
+use super::lock;
+use super::marking::Refused;
+use super::rows::{Context, Scribe};
+use super::status::{Fault, Status};
+use crate::config::Tick;
+use crate::gauges::{Moment, TallyBook};
+use crate::team::Ticket;
+use std::time::Duration;
+
+/// Reductions in flight before the oldest is waited for.
+const IN_FLIGHT: usize = 2;
+/// The same for contributions in doubt, which must not wait for a step that may never come.
+const IN_DOUBT: usize = 64;
+/// How long a rank waits for the others within a step before it gives up the run (not the host).
+const STEP_PATIENCE: Duration = Duration::from_secs(600);
+
+/// A contribution that has been started.
+pub(super) struct Flight {
+    pub ticket: Ticket,
+    pub context: Context,
+    /// Set when this rank was in error: what it handed over, to be taken back if no row comes of it.
+    pub doubt: Option<Doubt>,
+}
+
+/// What a rank in error has handed over with its contribution.
+pub(super) struct Doubt {
+    pub steps: u64,
+    pub tallies: TallyBook,
+}
+
+/// What a rank contributes besides its sums.
+struct Contribution {
+    condition: Condition,
+    step: Option<StepWords>,
+    host: HostWords,
+    moment: Option<Moment>,
+}
+
+impl Core {
+    pub fn enter(&mut self) -> Result<(), Fault> {
+        match std::mem::replace(&mut self.stage, Stage::Between) {
+            Stage::Marked {
+                clock,
+                moment: None,
+            } => {
+                self.let_go();
+                self.poll();
+                self.awake()?;
+                self.tell_stood_in(&clock)
+            }
+            Stage::Marked {
+                clock,
+                moment: Some(moment),
+            } => {
+                self.stage = Stage::Marked {
+                    clock,
+                    moment: Some(moment),
+                };
+                self.sound_all()?;
+                self.stage = Stage::Between;
+                self.let_go();
+                self.enter_measured(clock, moment)
+            }
+            Stage::MarkedInError(refused) => {
+                self.let_go();
+                self.enter_in_error(refused)
+            }
+            Stage::Between => {
+                let text = "no step is marked; every limno_enter follows a limno_mark";
+                let fault = self.keep(Fault::new(Status::BadOrder, text));
+                if self.team.size() > 1 {
+                    // The others may be entering a step: they must not wait for this rank.
+                    self.contribute_in_error(Condition::InDoubt, &Refused::default())?;
+                }
+                Err(fault)
+            }
+        }
+    }
+
+    fn enter_measured(&mut self, clock: Clock, moment: Moment) -> Result<(), Fault> {
+        let ln_a = moment.scale_factor.ln();
+        while self.is_in_doubt() && self.due(&clock, ln_a) && !self.stood_in.contains(&clock.step) {
+            self.absorb_oldest(STEP_PATIENCE)?;
+        }
+        if self.stood_in.contains(&clock.step) {
+            self.sweep.clear();
+            self.poll();
+            return self.tell_stood_in(&clock);
+        }
+        if !self.due(&clock, ln_a) {
+            // Only after a doubt: the step before was measured after all, so this one is not.
+            self.sweep.clear();
+            return self.awake();
+        }
+        let left_out = self.left_out();
+        if let Some(fault) = &left_out {
+            self.keep(fault.clone());
+        }
+        let condition = match &self.trouble {
+            Some(fault) if fault.status != Status::LeftOut => Condition::InError,
+            _ => Condition::Well,
+        };
+        let contribution = Contribution {
+            condition,
+            step: Some(StepWords {
+                step: clock.step,
+                time: Some(clock.time),
+                has_interval: moment.interval.is_some(),
+            }),
+            host: HostWords {
+                steps: std::mem::take(&mut self.steps_since_row),
+                checkpoint: clock.checkpoint,
+                step_length: clock.step_length,
+            },
+            moment: Some(moment),
+        };
+        self.history = None;
+        self.last_row = Some(clock.time);
+        self.last_tick = Some(Tick {
+            step: clock.step,
+            time: clock.time,
+            ln_a,
+        });
+        self.contribute(contribution)?;
+        if clock.checkpoint {
+            self.flush(STEP_PATIENCE)?;
+            if let Some(scribe) = &mut self.scribe {
+                scribe.make_durable()?;
+            }
+        } else {
+            self.poll();
+        }
+        self.awake()?;
+        match left_out {
+            Some(fault) => Err(fault),
+            None => self.scribe.as_mut().map_or(Ok(()), Scribe::complain_once),
+        }
+    }
+
+    /// An error when this rank's part of the step was given before, by a contribution in doubt.
+    fn tell_stood_in(&mut self, clock: &Clock) -> Result<(), Fault> {
+        if !self.stood_in.contains(&clock.step) {
+            return Ok(());
+        }
+        self.last_row = Some(clock.time);
+        self.steps_since_row = 0;
+        let text = format!(
+            "the row of step {} was made without what this rank lent: a limno_enter before it, without a clock that \
+             could be used, took its place; what is incomplete is null",
+            clock.step
+        );
+        Fault::err(Status::BadOrder, text)
+    }
+
+    /// Numbers that were not finite on this rank, named.
+    fn left_out(&self) -> Option<Fault> {
+        let mut named = Vec::new();
+        for (species, field) in &self.words.checked {
+            let index = crate::sweep::not_finite_index(*species, *field);
+            let count: u64 = self
+                .sweep
+                .workers()
+                .iter()
+                .map(|worker| worker.not_finite[index])
+                .sum();
+            if count > 0 {
+                named.push(format!("{count} of {} {}", species.name(), field.name()));
+            }
+        }
+        let overflowed = self.overflowed();
+        if overflowed > 0 {
+            named.push(format!("{overflowed} contributions that overflowed"));
+        }
+        (!named.is_empty()).then(|| {
+            Fault::new(
+                Status::LeftOut,
+                format!("not finite and left out of the row: {}", named.join(", ")),
+            )
+        })
+    }
+
+    fn overflowed(&self) -> u64 {
+        self.sweep
+            .workers()
+            .iter()
+            .map(|worker| worker.sample.left_out())
+            .sum()
+    }
+
+    /// A step whose clock this rank could not accept: it still takes part, so that the others do not wait.
+    pub(super) fn enter_in_error(&mut self, refused: Refused) -> Result<(), Fault> {
+        if self.team.size() == 1 {
+            // There is no row to take part in; what was tallied waits for the next.
+            return self.awake();
+        }
+        let condition = loop {
+            let stood_in = refused
+                .step
+                .is_some_and(|step| self.stood_in.contains(&step));
+            match self.due_in_error(&refused) {
+                Some(false) => return self.awake(),
+                Some(true) if stood_in => return self.awake(),
+                Some(true) if self.is_in_doubt() => self.absorb_oldest(STEP_PATIENCE)?,
+                Some(true) => break Condition::InError,
+                None => break Condition::InDoubt,
+            }
+        };
+        self.contribute_in_error(condition, &refused)?;
+        if condition == Condition::InError
+            && refused.checkpoint == Some(true)
+            && self.scribe.is_some()
+        {
+            self.flush(STEP_PATIENCE)?;
+            if let Some(scribe) = &mut self.scribe {
+                scribe.make_durable()?;
+            }
+        }
+        self.awake()
+    }
+
+    fn contribute_in_error(
+        &mut self,
+        condition: Condition,
+        refused: &Refused,
+    ) -> Result<(), Fault> {
+        self.sweep.clear();
+        for state in self.sweep.needs.iter_mut().flatten() {
+            state.soundings = 1;
+            state.without = 1;
+            // An optional field is missed only where another rank has it; here it is.
+            state.with = 1;
+        }
+        self.history = None;
+        self.last_row = None;
+        let step = refused
+            .step
+            .filter(|_| condition == Condition::InError)
+            .map(|step| StepWords {
+                step,
+                time: None,
+                has_interval: false,
+            });
+        let host = HostWords {
+            steps: std::mem::take(&mut self.steps_since_row),
+            checkpoint: refused.checkpoint.unwrap_or(false),
+            step_length: 0.0,
+        };
+        self.contribute(Contribution {
+            condition,
+            step,
+            host,
+            moment: None,
+        })?;
+        self.poll();
+        self.awake()
+    }
+
+    /// Starts this rank's part of a reduction.
+    fn contribute(&mut self, contribution: Contribution) -> Result<(), Fault> {
+        let Contribution {
+            condition,
+            step,
+            host,
+            moment,
+        } = contribution;
+        let is_in_error = moment.is_none();
+        let room = if is_in_error { IN_DOUBT } else { IN_FLIGHT };
+        while self.flights.len() >= room {
+            self.absorb_oldest(STEP_PATIENCE)?;
+        }
+        let condition = if self.asleep_alone.is_some() {
+            Condition::Asleep
+        } else {
+            condition
+        };
+        let doubt = {
+            let mut book = lock(&self.tallies);
+            for active in &self.gauges {
+                active.gauge.take_tallies(&book, self.sweep.own_sample());
+            }
+            let doubt = is_in_error.then(|| Doubt {
+                steps: host.steps,
+                tallies: book.clone(),
+            });
+            book.clear();
+            doubt
+        };
+        let mut buffer = self.spare.pop().unwrap_or_default();
+        let words = &self.words;
+        words.layout.clear(&mut buffer);
+        words.put_condition(&mut buffer, condition, self.overflowed());
+        if let Some(step) = step {
+            words.put_step(&mut buffer, step);
+        }
+        words.put_host(&mut buffer, host);
+        let since = self.since.elapsed().as_nanos() as u64;
+        words.put_cost(&mut buffer, self.spent.min(since), since);
+        self.spent = 0;
+        self.since = std::time::Instant::now();
+        words.put_needs(&mut buffer, &self.sweep.needs);
+        for worker in self.sweep.workers() {
+            words.add_not_finite(&mut buffer, &worker.not_finite);
+            words
+                .packing
+                .add(&words.layout, &worker.sample, &mut buffer);
+        }
+        let rank = self.team.rank();
+        if let Some(why) = &self.asleep_alone {
+            words.put_text(&mut buffer, true, rank, Status::Internal, why);
+        } else if let Some(fault) = self.trouble.take() {
+            words.put_text(&mut buffer, false, rank, fault.status, &fault.text);
+        }
+        self.sweep.clear();
+        match self.team.start(buffer) {
+            Ok(ticket) => {
+                self.flights.push_back(Flight {
+                    ticket,
+                    context: Context { moment },
+                    doubt,
+                });
+                Ok(())
+            }
+            Err(error) => Err(self.lose_team(&error, STEP_PATIENCE)),
+        }
+    }
+
+    // ---- taking in what has been combined -----------------------------------------------------------
+
+    /// Has this rank contributed to a step of which it does not know all?
+    fn is_in_doubt(&self) -> bool {
+        self.flights.iter().any(|flight| flight.doubt.is_some())
+    }
+
+    /// Takes in what has completed, without waiting.
+    pub(super) fn poll(&mut self) {
+        while let Some(flight) = self.flights.front() {
+            match self.team.is_complete(flight.ticket) {
+                Ok(true) if self.asleep.is_none() => {
+                    if self.absorb_oldest(STEP_PATIENCE).is_err() {
+                        return;
+                    }
+                }
+                Ok(_) => return,
+                Err(error) => {
+                    self.lose_team(&error, STEP_PATIENCE);
+                    return;
+                }
+            }
+        }
+    }
+
+    pub(super) fn flush(&mut self, patience: Duration) -> Result<(), Fault> {
+        while !self.flights.is_empty() {
+            self.absorb_oldest(patience)?;
+        }
+        Ok(())
+    }
+
+    /// Waits for the oldest reduction and draws the conclusions, which are the same on every rank.
+    fn absorb_oldest(&mut self, patience: Duration) -> Result<(), Fault> {
+        let Some((combined, flight, buffer)) = self.receive_oldest(patience)? else {
+            return Ok(());
+        };
+        match combined.reason_to_sleep() {
+            Some(why) => Err(self.fall_asleep(why)),
+            None => {
+                self.take_in(&combined, flight, &buffer);
+                self.spare.push(buffer);
+                Ok(())
+            }
+        }
+    }
+
+    /// Waits for the oldest reduction.
+    pub(super) fn receive_oldest(
+        &mut self,
+        patience: Duration,
+    ) -> Result<Option<(Combined, Flight, Vec<u64>)>, Fault> {
+        let Some(flight) = self.flights.front() else {
+            return Ok(None);
+        };
+        let buffer = match self.team.finish(flight.ticket, patience) {
+            Ok(buffer) => buffer,
+            Err(error) => return Err(self.lose_team(&error, patience)),
+        };
+        let Some(flight) = self.flights.pop_front() else {
+            return Ok(None);
+        };
+        if !self.words.layout.agrees(&buffer) {
+            let why =
+                "the ranks' buffers differ in shape; do all run the same library?".to_string();
+            return Err(self.fall_asleep(why));
+        }
+        Ok(Some((self.words.read(&buffer), flight, buffer)))
+    }
+
+    /// Makes a row of what all have contributed, and learns from it.
+    pub(super) fn take_in(&mut self, combined: &Combined, flight: Flight, buffer: &[u64]) {
+        let is_row = combined.timed > 0;
+        if is_row {
+            self.rows += 1;
+        }
+        if let Some(doubt) = flight.doubt {
+            if !is_row {
+                self.steps_since_row += doubt.steps;
+                lock(&self.tallies).add_book(&doubt.tallies);
+            }
+            self.learn(combined);
+        }
+        if let Some(scribe) = &mut self.scribe {
+            let reduced = self.words.packing.reduced(&self.words.layout, buffer);
+            scribe.write(
+                &self.config,
+                &self.plan,
+                &mut self.gauges,
+                &flight.context,
+                combined,
+                reduced,
+            );
+        }
+    }
+
+    /// Learns to which step a contribution belonged that this rank made in error.
+    fn learn(&mut self, combined: &Combined) {
+        let Some((step, _)) = combined.steps else {
+            return;
+        };
+        self.stood_in.push(step);
+        if let Some((time, _)) = combined.times {
+            let ln_a = self
+                .config
+                .clockwork
+                .moment(time)
+                .map_or(0.0, |moment| moment.ln_a);
+            self.last_tick = Some(Tick { step, time, ln_a });
+        }
+    }
+}
