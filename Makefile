@@ -37,11 +37,11 @@ say = @printf '\n== %s\n'
 .SUFFIXES:
 .PHONY: help demo test bench install libraries program hosts clean FORCE \
 	prepare-base prepare-mpi prepare-hosts prepare-tests \
-	test-format test-lints test-rust test-mpi test-c test-hosts test-python
+	test-format test-lints test-rust test-mpi test-hosts test-python
 
 help:
 	@echo 'make demo              build all, run Saltmarsh on $(RANKS) ranks (RANKS=…), show what was recorded'
-	@echo 'make test              check everything; parts: test-format test-lints test-rust test-mpi test-c'
+	@echo 'make test              check everything; parts: test-format test-lints test-rust test-mpi'
 	@echo '                       test-hosts test-python'
 	@echo 'make bench             measure what the library costs'
 	@echo 'make install           libraries, headers, Fortran module source, program, pkg-config files to'
@@ -149,7 +149,7 @@ demo: prepare-hosts $(SALTMARSH) $(PROGRAM)
 # --- Tests --------------------------------------------------------------------------------------------
 
 test:
-	@+scripts/test.sh format lints rust mpi c hosts python
+	@+scripts/test.sh format lints rust mpi hosts python
 
 test-format:
 	@$(CARGO) fmt --check
@@ -162,15 +162,10 @@ test-rust: prepare-base
 	@$(CARGO) test $(CARGO_ALONE)
 test-mpi: prepare-hosts
 	@$(CARGO) test $(CARGO_MPI) --lib --test 'mpi_*'
-test-c: prepare-tests libraries program
-	@LIMNOGRAPH=$(PROGRAM) tests/c/run.sh $(LIB) $(LIB)
 test-hosts: prepare-tests libraries program hosts
 	@scripts/test-hosts.sh
 test-python: prepare-tests $(PYTHON) $(PROGRAM) $(SALTMARSH)
-	@mkdir -p $(BUILD)/test
-	@$(CARGO) run --quiet $(CARGO_ALONE) --example print_units_and_cosmology -- $(BUILD)/test/units.json
-	@$(PYTHON) tests/astropy/check_units_and_cosmology.py $(BUILD)/test/units.json
-	@PYTHON=$(PYTHON) tests/astropy/rows_of_saltmarsh.sh $(BUILD)/test/rows
+	@scripts/test-python.sh
 
 $(PYTHON): tests/astropy/requirements.txt | prepare-tests
 	$(say) 'A virtual environment for the checks against astropy and scipy'

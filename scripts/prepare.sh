@@ -6,7 +6,7 @@
 #   base    the library and the program: Rust, a C compiler, binutils
 #   mpi     the library with MPI: an MPI compiler, libclang
 #   hosts   the programs in ffi-examples: mpirun, an MPI Fortran compiler, FFTW with MPI
-#   tests   python3 with venv, clang, pkg-config
+#   tests   python3 with venv, clang, a C++ compiler, valgrind, pkg-config
 #
 # What is missing is installed with apt when this runs as root or may use sudo without a password. Otherwise
 # the packages to ask an administrator for are printed, and the exit status is 1. The verdict is remembered in
@@ -28,7 +28,7 @@ has() { command -v "$1" >/dev/null 2>&1; }
 # Where the tools stand and what they are: when this has not changed, neither has the verdict.
 fingerprint() {
     echo "$PATH"
-    for tool in cargo "$CC" "$MPICC" "$MPIF90" mpirun python3 clang pkg-config ld; do
+    for tool in cargo "$CC" "$MPICC" "$MPIF90" mpirun python3 clang "${CXX:-c++}" valgrind pkg-config ld; do
         path=$(command -v "$tool" 2>/dev/null) && ls -lL "$path"
     done
     cat "$0"
@@ -79,6 +79,8 @@ int main(void) { fftw_mpi_init(); return 0; }' -lfftw3_mpi -lfftw3 -lm || lacks 
     if wants tests; then
         has_venv || lacks "python3, 3.11 or newer, with venv" python3 python3-venv
         has clang || lacks "clang" clang
+        builds "${CXX:-c++}" cpp.cpp 'int main() { return 0; }' || lacks "a C++ compiler (${CXX:-c++})" g++
+        has valgrind || lacks "valgrind" valgrind libc6-dbg
         has pkg-config || lacks "pkg-config" pkg-config
     fi
 }
