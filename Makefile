@@ -59,10 +59,13 @@ prepare-base:
 	@scripts/prepare.sh base
 prepare-mpi:
 	@scripts/prepare.sh base mpi
+	@scripts/same-mpi.sh
 prepare-hosts:
 	@scripts/prepare.sh base mpi hosts
+	@scripts/same-mpi.sh
 prepare-tests:
 	@scripts/prepare.sh base mpi hosts tests
+	@scripts/same-mpi.sh
 
 # --- Libraries and program ----------------------------------------------------------------------------
 

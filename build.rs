@@ -34,14 +34,14 @@ fn mpi_library() -> String {
     let out = PathBuf::from(env::var_os("OUT_DIR").unwrap_or_default());
     let source = out.join("mpi_name.c");
     // Descendants first: they also define the macros of what they descend from. A macro that is not
-    // defined stays a word.
+    // defined stays a word; the names are quoted because some are macros themselves.
     let text = "#include <mpi.h>\n\
-        limnograph_names Cray MPICH = CRAY_MPICH_VERSION\n\
-        limnograph_names Intel MPI = I_MPI_VERSION\n\
-        limnograph_names MVAPICH2 = MVAPICH2_VERSION\n\
-        limnograph_names MVAPICH = MVAPICH_VERSION\n\
-        limnograph_names Open MPI = OMPI_MAJOR_VERSION . OMPI_MINOR_VERSION\n\
-        limnograph_names MPICH = MPICH_VERSION\n";
+        limnograph_names \"Cray MPICH\" = CRAY_MPICH_VERSION\n\
+        limnograph_names \"Intel MPI\" = I_MPI_VERSION\n\
+        limnograph_names \"MVAPICH2\" = MVAPICH2_VERSION\n\
+        limnograph_names \"MVAPICH\" = MVAPICH_VERSION\n\
+        limnograph_names \"Open MPI\" = OMPI_MAJOR_VERSION . OMPI_MINOR_VERSION\n\
+        limnograph_names \"MPICH\" = MPICH_VERSION\n";
     let expanded = std::fs::write(&source, text).ok().and_then(|()| {
         Command::new(&wrapper)
             .args(["-E", "-P"])
@@ -63,17 +63,15 @@ fn mpi_library() -> String {
         .unwrap_or_else(|| "unknown".into())
 }
 
-/// `limnograph_names Open MPI = 4 . 1` → `Open MPI 4.1`.
+/// `limnograph_names "Open MPI" = 4 . 1` → `Open MPI 4.1`.
 fn read_name(line: &str) -> Option<String> {
     let (name, version) = line
         .trim()
         .strip_prefix("limnograph_names ")?
         .split_once('=')?;
-    let version: String = version
-        .chars()
-        .filter(|c| !c.is_whitespace() && *c != '"')
-        .collect();
+    let bare = |text: &str| text.replace('"', "");
+    let version = bare(version).replace(char::is_whitespace, "");
     version
         .starts_with(|c: char| c.is_ascii_digit())
-        .then(|| format!("{} {version}", name.trim()))
+        .then(|| format!("{} {version}", bare(name).trim()))
 }

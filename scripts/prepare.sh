@@ -123,6 +123,9 @@ TEXT
 fi
 
 mkdir -p "$build"
+# With make -j several of us may run.
+exec 9>"$build/prepare.lock"
+if has flock; then flock 9; fi
 now=$(fingerprint 2>/dev/null | cksum)
 if [ -f "$verdict" ] && [ "$(cat "$verdict")" = "$now" ]; then
     exit 0

@@ -147,10 +147,13 @@ pub(super) fn join(host: ffi::MPI_Comm) -> Result<MpiTeam, JoinError> {
                 .into(),
         ));
     }
-    let handler = HostHandler::replace(host)?;
-    let comm = duplicate(host);
-    drop(handler);
-    let comm = comm?;
+    let comm = {
+        // Errors that belong to no communicator, such as a handle that is none, come to this one (MPI 4).
+        // SAFETY: a constant of the bindings.
+        let _own = HostHandler::replace(unsafe { ffi::RSMPI_COMM_SELF })?;
+        let _host = HostHandler::replace(host)?;
+        duplicate(host)?
+    };
 
     let (made, operation) = make_operation();
     let mut everywhere: c_int = 0;
@@ -243,7 +246,7 @@ fn make_operation() -> (Result<(), JoinError>, ffi::MPI_Op) {
     (check(code, "MPI_Op_create"), operation)
 }
 
-/// Makes errors on the host's communicator return, until dropped.
+/// Makes errors on a communicator of the host return, until dropped.
 struct HostHandler {
     comm: ffi::MPI_Comm,
     before: ffi::MPI_Errhandler,
@@ -258,7 +261,8 @@ impl HostHandler {
             check(
                 ffi::MPI_Comm_get_errhandler(comm, &raw mut before),
                 "MPI_Comm_get_errhandler",
-            )?;
+            )
+            .map_err(|error| JoinError::BadCommunicator(error.to_string()))?;
             let guard = HostHandler { comm, before };
             check(
                 ffi::MPI_Comm_set_errhandler(comm, ffi::RSMPI_ERRORS_RETURN),
