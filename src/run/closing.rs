@@ -2,7 +2,7 @@
 
 use super::contribution::Condition;
 use super::core::Core;
-use super::entering::Flight;
+use super::entering::{Flight, Overdue, Received};
 use super::rows::Context;
 use super::status::{Fault, Status};
 use crate::team::TeamError;
@@ -120,9 +120,14 @@ impl Core {
         } else {
             CLOSE_PATIENCE
         };
-        let Some((combined, flight, buffer)) = self.receive_oldest(patience)? else {
+        let Some(received) = self.receive_oldest(patience, Overdue::IsAFault)? else {
             return Ok(false);
         };
+        let Received {
+            combined,
+            flight,
+            buffer,
+        } = received;
         if combined.ranks(Condition::Closing) == u64::from(self.team.size()) {
             return Ok(true);
         }

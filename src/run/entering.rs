@@ -3,7 +3,8 @@
 //! Every rank takes part in every reduction, also when it is in error. One that does not know which step the
 //! others are at, because its host entered without a mark or gave a clock that could not be read, contributes in
 //! doubt: its part stands for whichever step the others contribute to. Before its next part it waits to learn
-//! which step that was. That wait is safe: the others come to that step without waiting for this rank.
+//! which step that was: the others come to that step without waiting for this rank. If one of them does not,
+//! because its own host has gone astray, the wait is given up after a while and the next part is in doubt too.
 
 use super::clock::Clock;
 use super::contribution::{Combined, Condition, HostWords, StepWords};
@@ -14,15 +15,17 @@ use super::rows::{Context, Scribe};
 use super::status::{Fault, Status};
 use crate::config::Tick;
 use crate::gauges::{Moment, TallyBook};
-use crate::team::Ticket;
-use std::time::Duration;
+use crate::team::{TeamError, Ticket};
+use std::time::{Duration, Instant};
 
 /// Reductions in flight before the oldest is waited for.
 const IN_FLIGHT: usize = 2;
-/// The same for contributions in doubt, which must not wait for a step that may never come.
+/// Contributions of a rank in error in flight before it leaves out further ones.
 const IN_DOUBT: usize = 64;
 /// How long a rank waits for the others within a step before it gives up the run (not the host).
 const STEP_PATIENCE: Duration = Duration::from_secs(600);
+/// How long a rank in doubt waits to learn at which step the others are.
+const DOUBT_PATIENCE: Duration = Duration::from_secs(20);
 
 /// A contribution that has been started.
 pub(super) struct Flight {
@@ -36,6 +39,20 @@ pub(super) struct Flight {
 pub(super) struct Doubt {
     pub steps: u64,
     pub tallies: TallyBook,
+}
+
+/// A reduction that is complete.
+pub(super) struct Received {
+    pub combined: Combined,
+    pub flight: Flight,
+    pub buffer: Vec<u64>,
+}
+
+/// What it means that the others have not taken part in time.
+#[derive(Clone, Copy, PartialEq, Eq)]
+pub(super) enum Overdue {
+    IsAFault,
+    IsNoFault,
 }
 
 /// What a rank contributes besides its sums.
@@ -89,8 +106,9 @@ impl Core {
 
     fn enter_measured(&mut self, clock: Clock, moment: Moment) -> Result<(), Fault> {
         let ln_a = moment.scale_factor.ln();
-        while self.is_in_doubt() && self.due(&clock, ln_a) && !self.stood_in.contains(&clock.step) {
-            self.absorb_oldest(STEP_PATIENCE)?;
+        let is_open = |core: &Core| core.due(&clock, ln_a) && !core.stood_in.contains(&clock.step);
+        if !self.settle_doubts(is_open)? {
+            return self.enter_in_doubt(&clock);
         }
         if self.stood_in.contains(&clock.step) {
             self.sweep.clear();
@@ -145,6 +163,24 @@ impl Core {
             Some(fault) => Err(fault),
             None => self.scribe.as_mut().map_or(Ok(()), Scribe::complain_once),
         }
+    }
+
+    /// A step that this rank has measured, and cannot tell whether its part of it was given before.
+    fn enter_in_doubt(&mut self, clock: &Clock) -> Result<(), Fault> {
+        let text = format!(
+            "after an error in a step before, this rank waited {} s in vain to learn at which step the others are; what \
+             it lent for step {} is not in its row",
+            DOUBT_PATIENCE.as_secs(),
+            clock.step
+        );
+        let fault = self.keep(Fault::new(Status::BadOrder, text));
+        let refused = Refused {
+            step: Some(clock.step),
+            synchronised: Some(clock.synchronised),
+            checkpoint: Some(clock.checkpoint),
+        };
+        self.contribute_in_error(Condition::InDoubt, &refused)?;
+        Err(fault)
     }
 
     /// An error when this rank's part of the step was given before, by a contribution in doubt.
@@ -203,17 +239,17 @@ impl Core {
             // There is no row to take part in; what was tallied waits for the next.
             return self.awake();
         }
-        let condition = loop {
-            let stood_in = refused
-                .step
-                .is_some_and(|step| self.stood_in.contains(&step));
-            match self.due_in_error(&refused) {
-                Some(false) => return self.awake(),
-                Some(true) if stood_in => return self.awake(),
-                Some(true) if self.is_in_doubt() => self.absorb_oldest(STEP_PATIENCE)?,
-                Some(true) => break Condition::InError,
-                None => break Condition::InDoubt,
-            }
+        // Without a step number there is no telling when a wait has told enough.
+        let step = refused.step;
+        let stood_in = |core: &Core| step.is_some_and(|step| core.stood_in.contains(&step));
+        self.settle_doubts(|core: &Core| {
+            step.is_some() && core.due_in_error(&refused) == Some(true) && !stood_in(core)
+        })?;
+        let condition = match self.due_in_error(&refused) {
+            Some(false) => return self.awake(),
+            Some(true) if stood_in(self) => return self.awake(),
+            Some(true) if !self.is_in_doubt() => Condition::InError,
+            _ => Condition::InDoubt,
         };
         self.contribute_in_error(condition, &refused)?;
         if condition == Condition::InError
@@ -234,6 +270,10 @@ impl Core {
         refused: &Refused,
     ) -> Result<(), Fault> {
         self.sweep.clear();
+        if self.flights.len() >= IN_DOUBT {
+            // So far ahead of the others that they will not miss this part for a long time.
+            return self.awake();
+        }
         for state in self.sweep.needs.iter_mut().flatten() {
             state.soundings = 1;
             state.without = 1;
@@ -274,8 +314,8 @@ impl Core {
             moment,
         } = contribution;
         let is_in_error = moment.is_none();
-        let room = if is_in_error { IN_DOUBT } else { IN_FLIGHT };
-        while self.flights.len() >= room {
+        // A rank in error waits for nobody: the step that it would wait for may never come.
+        while !is_in_error && self.flights.len() >= IN_FLIGHT {
             self.absorb_oldest(STEP_PATIENCE)?;
         }
         let condition = if self.asleep_alone.is_some() {
@@ -306,7 +346,7 @@ impl Core {
         let since = self.since.elapsed().as_nanos() as u64;
         words.put_cost(&mut buffer, self.spent.min(since), since);
         self.spent = 0;
-        self.since = std::time::Instant::now();
+        self.since = Instant::now();
         words.put_needs(&mut buffer, &self.sweep.needs);
         for worker in self.sweep.workers() {
             words.add_not_finite(&mut buffer, &worker.not_finite);
@@ -341,6 +381,21 @@ impl Core {
         self.flights.iter().any(|flight| flight.doubt.is_some())
     }
 
+    /// Waits to learn to which steps contributions in doubt belong, for as long as it matters. Not for ever: a
+    /// rank whose host leaves out a step in error contributes only when it marks the next. `false` when the wait
+    /// was in vain.
+    fn settle_doubts(&mut self, it_matters: impl Fn(&Core) -> bool) -> Result<bool, Fault> {
+        let until = Instant::now() + DOUBT_PATIENCE;
+        while self.is_in_doubt() && it_matters(self) {
+            let left = until.saturating_duration_since(Instant::now());
+            match self.receive_oldest(left, Overdue::IsNoFault)? {
+                Some(received) => self.conclude(received)?,
+                None => return Ok(false),
+            }
+        }
+        Ok(true)
+    }
+
     /// Takes in what has completed, without waiting.
     pub(super) fn poll(&mut self) {
         while let Some(flight) = self.flights.front() {
@@ -368,9 +423,18 @@ impl Core {
 
     /// Waits for the oldest reduction and draws the conclusions, which are the same on every rank.
     fn absorb_oldest(&mut self, patience: Duration) -> Result<(), Fault> {
-        let Some((combined, flight, buffer)) = self.receive_oldest(patience)? else {
-            return Ok(());
-        };
+        match self.receive_oldest(patience, Overdue::IsAFault)? {
+            Some(received) => self.conclude(received),
+            None => Ok(()),
+        }
+    }
+
+    fn conclude(&mut self, received: Received) -> Result<(), Fault> {
+        let Received {
+            combined,
+            flight,
+            buffer,
+        } = received;
         match combined.reason_to_sleep() {
             Some(why) => Err(self.fall_asleep(why)),
             None => {
@@ -381,16 +445,18 @@ impl Core {
         }
     }
 
-    /// Waits for the oldest reduction.
+    /// Waits for the oldest reduction; none when there is none, or not in time.
     pub(super) fn receive_oldest(
         &mut self,
         patience: Duration,
-    ) -> Result<Option<(Combined, Flight, Vec<u64>)>, Fault> {
+        overdue: Overdue,
+    ) -> Result<Option<Received>, Fault> {
         let Some(flight) = self.flights.front() else {
             return Ok(None);
         };
         let buffer = match self.team.finish(flight.ticket, patience) {
             Ok(buffer) => buffer,
+            Err(TeamError::Overdue) if overdue == Overdue::IsNoFault => return Ok(None),
             Err(error) => return Err(self.lose_team(&error, patience)),
         };
         let Some(flight) = self.flights.pop_front() else {
@@ -401,7 +467,11 @@ impl Core {
                 "the ranks' buffers differ in shape; do all run the same library?".to_string();
             return Err(self.fall_asleep(why));
         }
-        Ok(Some((self.words.read(&buffer), flight, buffer)))
+        Ok(Some(Received {
+            combined: self.words.read(&buffer),
+            flight,
+            buffer,
+        }))
     }
 
     /// Makes a row of what all have contributed, and learns from it.

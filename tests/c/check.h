@@ -35,24 +35,39 @@ static char check_folder[512]; /* a folder of the test's own */
 static int check_rank;
 static int check_ranks = 1;
 
-static UNUSED __attribute__((format(printf, 2, 3))) void check_fail(int line, const char *format, ...)
+static UNUSED void check_tell(int line, const char *condition, const char *format, va_list arguments)
 {
     char text[1024];
-    check_failures++;
-    if (check_failures > 25) return;
-    int length = snprintf(text, sizeof text, check_ranks > 1 ? "line %d, rank %d: " : "line %d: ", line, check_rank);
-    va_list arguments;
-    va_start(arguments, format);
-    length += vsnprintf(text + length, sizeof text - (size_t)length - 2, format, arguments);
-    va_end(arguments);
-    if (length > (int)sizeof text - 2) length = (int)sizeof text - 2;
+    int length, room = (int)sizeof text - 2;
+    if (check_failures++ > 25) return;
+    length = snprintf(text, sizeof text, "line %d", line);
+    if (check_ranks > 1) length += snprintf(text + length, sizeof text - (size_t)length, ", rank %d", check_rank);
+    length += snprintf(text + length, sizeof text - (size_t)length, ": %.300s%s", condition, *condition ? ": " : "");
+    length += vsnprintf(text + length, sizeof text - (size_t)length, format, arguments);
+    if (length > room) length = room;
     text[length++] = '\n';
     if (write(check_out, text, (size_t)length) < 0) _exit(99);
 }
 
-#define CHECK(condition, ...)                                                 \
-    do {                                                                      \
-        if (!(condition)) check_fail(__LINE__, #condition ": " __VA_ARGS__);  \
+static UNUSED __attribute__((format(printf, 2, 3))) void check_fail(int line, const char *format, ...)
+{
+    va_list arguments;
+    va_start(arguments, format);
+    check_tell(line, "", format, arguments);
+    va_end(arguments);
+}
+
+static UNUSED __attribute__((format(printf, 3, 4))) void check_failed(int line, const char *condition, const char *format, ...)
+{
+    va_list arguments;
+    va_start(arguments, format);
+    check_tell(line, condition, format, arguments);
+    va_end(arguments);
+}
+
+#define CHECK(condition, ...)                                                  \
+    do {                                                                       \
+        if (!(condition)) check_failed(__LINE__, #condition, __VA_ARGS__);     \
     } while (0)
 
 /* The call answers this status. */
@@ -227,17 +242,23 @@ static UNUSED void lend_holes(limno_run *run, const struct hole *hole, size_t co
     EXPECT(run, limno_lend(run, "black_hole", "id", &hole->id, count, sizeof *hole, LIMNO_U64), LIMNO_OK);
 }
 
-/* Lends all of a universe but what other ranks have: element i belongs to rank i % ranks. */
+/* Lends all of a universe but what other ranks have, from room of the caller's: element i belongs to rank i % ranks. */
+static UNUSED void lend_share_from(struct universe *mine, limno_run *run, const struct universe *all, int rank, int ranks)
+{
+    size_t gases = 0, stars = 0, holes = 0;
+    for (int i = rank; i < GASES; i += ranks) mine->gas[gases++] = all->gas[i];
+    for (int i = rank; i < STARS; i += ranks) mine->star[stars++] = all->star[i];
+    for (int i = rank; i < HOLES; i += ranks) mine->hole[holes++] = all->hole[i];
+    lend_gas(run, mine->gas, gases);
+    lend_stars(run, mine->star, stars);
+    lend_holes(run, mine->hole, holes);
+}
+
+/* The same for hosts with one run. */
 static UNUSED void lend_share(limno_run *run, const struct universe *all, int rank, int ranks)
 {
     static struct universe mine;
-    size_t gases = 0, stars = 0, holes = 0;
-    for (int i = rank; i < GASES; i += ranks) mine.gas[gases++] = all->gas[i];
-    for (int i = rank; i < STARS; i += ranks) mine.star[stars++] = all->star[i];
-    for (int i = rank; i < HOLES; i += ranks) mine.hole[holes++] = all->hole[i];
-    lend_gas(run, mine.gas, gases);
-    lend_stars(run, mine.star, stars);
-    lend_holes(run, mine.hole, holes);
+    lend_share_from(&mine, run, all, rank, ranks);
 }
 
 static UNUSED void lend_universe(limno_run *run, const struct universe *all)

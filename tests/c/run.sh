@@ -30,7 +30,7 @@ export CXX=${CXX:-g++}
 export OMPI_ALLOW_RUN_AS_ROOT=1 OMPI_ALLOW_RUN_AS_ROOT_CONFIRM=1
 # Ranks share processors here; containers forbid one process to read another's memory.
 export OMPI_MCA_hwloc_base_binding_policy=none OMPI_MCA_btl_vader_single_copy_mechanism=none
-export OMPI_MCA_btl_base_warn_component_unused=0
+export OMPI_MCA_btl_base_warn_component_unused=0 OMPI_MCA_mpi_yield_when_idle=1
 place=$(mktemp -d "${TMPDIR:-/tmp}/limno-c-tests.XXXXXX")
 trap 'rm -rf "$place"' EXIT
 mkdir -p "$place/lib" "$place/bin" "$place/log"
