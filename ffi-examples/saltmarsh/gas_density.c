@@ -74,6 +74,7 @@ static double weighted_count(const struct surroundings *around, double radius)
     return 4.0 / 3.0 * PI * sum;
 }
 
+/* The radius that encloses the wanted number, or the nearest to it that is allowed. */
 static double find_radius(const struct surroundings *around, double start, double wanted,
                           double smallest, double largest)
 {
@@ -89,13 +90,13 @@ static double find_radius(const struct surroundings *around, double start, doubl
             high = radius;
         if (high - low < 1e-6 * high)
             break;
-        /* The count grows about as the cube of the radius. */
+        /* The count grows about as the cube of the radius. A first guess beyond what is allowed
+         * tries the end of that; later ones that leave the bracket halve it. */
         double guess = radius * cbrt(wanted / count);
-        radius = guess > low && guess < high ? guess : 0.5 * (low + high);
-        if (attempt == 0 && guess >= high)
-            radius = high;
-        if (attempt == 0 && guess <= low)
-            radius = low;
+        if (attempt == 0)
+            radius = fmin(fmax(guess, low), high);
+        else
+            radius = guess > low && guess < high ? guess : 0.5 * (low + high);
     }
     return radius;
 }

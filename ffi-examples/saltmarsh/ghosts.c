@@ -103,7 +103,7 @@ void ghosts_fetch(struct ghosts *ghosts, struct store *elements, double box, dou
     ghosts_refresh(ghosts, elements);
 }
 
-void ghosts_return(struct ghosts *ghosts, struct store *items, combine *combine)
+void ghosts_return(struct ghosts *ghosts, struct store *items, combine *take)
 {
     if (ghosts->ranks == 1)
         return;
@@ -115,6 +115,6 @@ void ghosts_return(struct ghosts *ghosts, struct store *items, combine *combine)
     MPI_Type_free(&item);
     for (size_t i = 0; i < ghosts->sent.count; i++) {
         const size_t *index = store_at(&ghosts->sent, i);
-        combine(store_at(items, *index), ghosts->scratch.items + i * items->item_size);
+        take(store_at(items, *index), ghosts->scratch.items + i * items->item_size);
     }
 }

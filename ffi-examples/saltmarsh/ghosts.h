@@ -27,9 +27,9 @@ void ghosts_fetch(struct ghosts *ghosts, struct store *elements, double box, dou
 /* Brings the copies up to date with their owners. Collective. */
 void ghosts_refresh(struct ghosts *ghosts, struct store *elements);
 
-/* Hands what has gathered on copies to their owners: combine(own, of_the_copy). One item per
+/* Hands what has gathered on copies to their owners: take(own, of_the_copy). One item per
  * element. Collective. */
 typedef void combine(void *own, const void *copy);
-void ghosts_return(struct ghosts *ghosts, struct store *items, combine *combine);
+void ghosts_return(struct ghosts *ghosts, struct store *items, combine *take);
 
 #endif

@@ -130,12 +130,13 @@ static double particle_mass(const struct simulation *simulation, double omega)
 
 static void warm_gas(struct simulation *simulation)
 {
+    const struct parameters *parameters = &simulation->parameters;
     struct store *gas = &simulation->species[GAS];
-    double spacing = simulation->parameters.box / simulation->parameters.side;
-    double neighbours = simulation->parameters.neighbours;
+    double radius = parameters->box / parameters->side * cbrt(0.75 * parameters->neighbours / PI);
+    double smallest = parameters->smallest_cells * parameters->box / parameters->mesh;
     for (size_t i = 0; i < gas->count; i++) {
-        gas_at(gas, i)->internal_energy = simulation->parameters.initial_kelvin / KELVIN_PER_ENERGY;
-        gas_at(gas, i)->smoothing_length = spacing * cbrt(0.75 * neighbours / PI);
+        gas_at(gas, i)->internal_energy = parameters->initial_kelvin / KELVIN_PER_ENERGY;
+        gas_at(gas, i)->smoothing_length = fmax(radius, smallest);
     }
 }
 

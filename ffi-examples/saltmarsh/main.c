@@ -23,14 +23,14 @@
  *   mpirun -n 2 saltmarsh --variant cordgrass --history strong_winds.txt
  *   mpirun -n 2 saltmarsh --test growth
  *
- * Others: --help; --test history and --test conservation; --steps-at-least 10000 --side 12
- * --mesh 24 for a long series in a short time; --dump STEP FILE (layout: dump.h).
+ * Others: --help; --test history and --test conservation; --steps-at-least 10000 --side 16
+ * --mesh 40 for a long series in a few minutes; --dump STEP FILE (layout: dump.h).
  *
  * What is simplified. Read the numbers as those of an example, not of a prediction:
  *   - Forces are soft below two mesh cells, so galaxies are clumps without inner structure, and gas
  *     is kept from contracting further by a least kernel radius and a Jeans pressure. Thresholds
  *     for stars and holes are set low to match the densities such clumps reach.
- *   - The smallest haloes hold a few dozen particles; star formation begins late, at z = 7 or so.
+ *   - The smallest haloes hold a few dozen particles; star formation begins late, at z = 5 or so.
  *   - The box is small: its own longest waves become nonlinear by the end.
  *   - Gas has one molecular weight; cooling is three power laws, without background radiation but
  *     for a floor of 1e4 K from reionisation on, which is a given redshift.

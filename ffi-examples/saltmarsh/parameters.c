@@ -62,8 +62,8 @@ static const struct variant variants[] = {
     { "saltmarsh", "the default universe", 1.0, 1.0 },
     { "samphire", "weak winds: a quarter of the energy", 0.25, 1.0 },
     { "cordgrass", "strong winds: three times the energy", 3.0, 1.0 },
-    { "eelgrass", "black holes grow but heat nothing", 1.0, 0.0 },
-    { "glasswort", "neither winds nor heating by black holes", 0.0, 0.0 },
+    { "eelgrass", "black holes heat a tenth as much", 1.0, 0.1 },
+    { "glasswort", "no winds at all", 0.0, 1.0 },
 };
 #define VARIANT_COUNT (sizeof variants / sizeof variants[0])
 
