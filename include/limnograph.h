@@ -243,7 +243,8 @@ typedef struct limno_clock {
     uint64_t step;
     /**
      * The moment that the lent arrays describe, in the coordinate that the config states under [time]:
-     * t in the host's time unit, the scale factor a, or ln a. Must not go back within a run.
+     * t in the host's time unit, the scale factor a, or ln a. Must not go back within a run, and must be the
+     * same to the bit on every rank: broadcast it where ranks compute it each for itself.
      */
     double time;
     /**
@@ -321,7 +322,7 @@ typedef struct limno_tally_batch {
      */
     size_t count;
     /**
-     * Mass of each event, in the host's mass unit.
+     * Mass of each event, in the host's mass unit. Amounts may be negative.
      */
     const double *mass;
     /**

@@ -55,7 +55,8 @@ void domain_balance(struct domain *domain, const struct store species[SPECIES_CO
     long long mine[WORK_BINS] = { 0 }, all[WORK_BINS];
     for (int s = 0; s < SPECIES_COUNT; s++) {
         for (size_t i = 0; i < species[s].count; i++) {
-            double x = body_at(&species[s], i)->position[0];
+            /* Called after a drift, when some have left the box. */
+            double x = wrap(body_at(&species[s], i)->position[0], domain->box);
             int bin = (int)(x / domain->box * WORK_BINS);
             mine[bin < WORK_BINS ? bin : WORK_BINS - 1] += work_of(&species[s], s, i);
         }

@@ -27,7 +27,7 @@ void parameters_default(struct parameters *parameters)
         .initial_kelvin = 15.0,
         .reionisation_redshift = 7.0,
         .jeans_cells = 2.0,
-        .star_threshold = 5e-4,
+        .star_threshold = 3e-4,
         .star_overdensity = 60.0,
         .star_efficiency = 0.1,
         .star_kelvin = 1e5,
@@ -202,6 +202,17 @@ static const struct option *find_option(const char *name)
     return NULL;
 }
 
+/* What a value of an option must be, in words. */
+static const char *expectation(const struct option *option)
+{
+    static char text[100];
+    if (option->kind == SEED)
+        return "expects a whole number from 0 on";
+    snprintf(text, sizeof text, "expects a %snumber from %g to %g",
+             option->kind == REAL ? "" : "whole ", option->least, option->most);
+    return text;
+}
+
 static int parse_count(const char *text, int64_t *count)
 {
     char *end = NULL;
@@ -227,7 +238,7 @@ static const char *parse_one(struct parameters *parameters, struct words *words,
     int left = words->count - words->next;
     if (strcmp(name, "--variant") == 0) {
         if (left < 1 || !choose_variant(parameters, words->word[words->next++]))
-            return "expects the name of a variant";
+            return "expects saltmarsh, samphire, cordgrass, eelgrass or glasswort";
         return NULL;
     }
     if (strcmp(name, "--steps-at-least") == 0) {
@@ -257,7 +268,7 @@ static const char *parse_one(struct parameters *parameters, struct words *words,
         *(const char **)(void *)((char *)parameters + option->offset) = text;
         return NULL;
     }
-    return store_number(parameters, option, text) ? NULL : "has an impossible value";
+    return store_number(parameters, option, text) ? NULL : expectation(option);
 }
 
 enum parse_result parameters_parse(struct parameters *parameters, int argc, char **argv, int speak)

@@ -130,27 +130,41 @@ static const struct summary *line_at(const struct history *history, size_t index
     return (const struct summary *)store_at(&history->lines, index);
 }
 
-/* Mean over the half Gyr around a step, weighted by time: the trapezium rule on its steps. */
-static double smoothed(const struct history *history, size_t centre)
+/* The mean over a window that moves through the history: the trapezium rule on whole steps. */
+struct window {
+    size_t first, last; /* steps within, as the lines they end at: [first, last) */
+    double area, width;
+};
+
+static void include(struct window *window, const struct history *history, size_t index, double sign)
+{
+    const struct summary *left = line_at(history, index - 1), *right = line_at(history, index);
+    double width = sign * (right->gyr - left->gyr);
+    window->area += 0.5 * (left->star_formation + right->star_formation) * width;
+    window->width += width;
+}
+
+/* Mean over the half Gyr around a step; steps are asked for in rising order. */
+static double smoothed(struct window *window, const struct history *history, size_t centre)
 {
     double from = line_at(history, centre)->gyr - 0.5 * SMOOTHING_GYR;
     double to = line_at(history, centre)->gyr + 0.5 * SMOOTHING_GYR;
-    double area = 0.0, width = 0.0;
-    for (size_t i = 1; i < history->lines.count; i++) {
-        const struct summary *left = line_at(history, i - 1), *right = line_at(history, i);
-        if (left->gyr < from || right->gyr > to)
-            continue;
-        area += 0.5 * (left->star_formation + right->star_formation) * (right->gyr - left->gyr);
-        width += right->gyr - left->gyr;
-    }
-    return width > 0.0 ? area / width : line_at(history, centre)->star_formation;
+    for (; window->last < history->lines.count && line_at(history, window->last)->gyr <= to;
+         window->last++)
+        include(window, history, window->last, 1.0);
+    for (; window->first < window->last && line_at(history, window->first - 1)->gyr < from;
+         window->first++)
+        include(window, history, window->first, -1.0);
+    return window->first < window->last ? window->area / window->width
+                                        : line_at(history, centre)->star_formation;
 }
 
 struct star_peak find_star_peak(const struct history *history)
 {
     struct star_peak peak = { 0.0, 0.0, 0.0 };
+    struct window window = { 1, 1, 0.0, 0.0 };
     for (size_t i = 0; i < history->lines.count; i++) {
-        double rate = smoothed(history, i);
+        double rate = smoothed(&window, history, i);
         peak.last = rate;
         if (rate > peak.height) {
             peak.height = rate;

@@ -35,7 +35,8 @@ pub struct Clock {
     /// The host's step number. Must grow from one mark to the next; numbers may be left out.
     pub step: u64,
     /// The moment that the lent arrays describe, in the coordinate that the config states under [time]:
-    /// t in the host's time unit, the scale factor a, or ln a. Must not go back within a run.
+    /// t in the host's time unit, the scale factor a, or ln a. Must not go back within a run, and must be the
+    /// same to the bit on every rank: broadcast it where ranks compute it each for itself.
     pub time: f64,
     /// Length of the step that ends at `time`, in the same coordinate and unit; 0 if not known.
     pub step_length: f64,
@@ -85,7 +86,7 @@ pub struct Tally {
     pub channel: *const c_char,
     /// Number of events in the batch.
     pub count: usize,
-    /// Mass of each event, in the host's mass unit.
+    /// Mass of each event, in the host's mass unit. Amounts may be negative.
     pub mass: *const f64,
     /// Magnitude of its momentum, in the host's momentum unit (unless the config says otherwise: mass unit
     /// times velocity unit, in the form in which velocities are kept).

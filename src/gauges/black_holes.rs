@@ -125,6 +125,9 @@ impl Gauge for BlackHoles {
         }
         let mass = reading.sum(self.sums, MASS) * moment.factors.mass;
         let rate = reading.sum(self.sums, RATE) * moment.factors.accretion_rate;
+        if moment.volume.is_none() {
+            entry.notes.push(super::NO_VOLUME);
+        }
         let per_volume = |value: f64| moment.volume.map(|volume| value / volume);
         let eddington = eddington_rate(mass, self.efficiency);
         entry.put(reading.reduced.count(self.number, 0));

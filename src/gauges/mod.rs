@@ -192,7 +192,12 @@ pub struct Entry {
     pub run: Vec<Value>,
     /// Rows of the gauge's own tables.
     pub rows: Vec<Row>,
+    /// Why something is null that was lent; each text is written down as an event once.
+    pub notes: Vec<&'static str>,
 }
+
+/// The note of every gauge that has densities, where there is no volume.
+pub(crate) const NO_VOLUME: &str = "the config states no volume, so densities are null";
 
 impl Entry {
     /// The next of the gauge's columns.

@@ -124,6 +124,9 @@ impl Gauge for StarFormation {
     }
 
     fn enter(&mut self, reading: &Reading, moment: &Moment, entry: &mut Entry) {
+        if moment.volume.is_none() {
+            entry.notes.push(super::NO_VOLUME);
+        }
         let rate = reading
             .is_measured(Species::Gas)
             .then(|| reading.sum(self.rate, 0) * moment.factors.star_formation_rate);

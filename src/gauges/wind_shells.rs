@@ -395,6 +395,11 @@ impl Gauge for WindShells {
 
     fn enter(&mut self, reading: &Reading, moment: &Moment, entry: &mut Entry) {
         let measured = reading.presence(Species::Gas) == Presence::Measured;
+        if measured && self.shells(moment).fitting + 1 < self.edges.len() {
+            entry.notes.push(
+                "a shell reaches beyond half the periodic box and is null as long as it does",
+            );
+        }
         let fitting = if measured {
             self.shells(moment).fitting
         } else {

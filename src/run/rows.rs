@@ -223,6 +223,8 @@ pub(super) struct Scribe {
     series: Series,
     /// Gaps already told as an event.
     told: HashSet<(usize, Species, Option<Field>)>,
+    /// Notes of gauges that are written down.
+    noted: HashSet<(usize, &'static str)>,
     /// Rows of earlier legs, until the first row of this one.
     history: Option<Arc<History>>,
     last_step: u64,
@@ -238,6 +240,7 @@ impl Scribe {
         Scribe {
             series,
             told: HashSet::new(),
+            noted: HashSet::new(),
             history: Some(history),
             last_step: 0,
             last_time: 0.0,
@@ -310,6 +313,11 @@ impl Scribe {
             run.append(&mut entry.run);
             rows.append(&mut entry.rows);
             self.tell_gaps(index, &active.name, &reading, &mut events);
+            for note in entry.notes {
+                if self.noted.insert((index, note)) {
+                    events.push((active.name.clone(), note.to_string()));
+                }
+            }
         }
         run.extend(
             combined
@@ -377,7 +385,8 @@ impl Scribe {
                 Presence::Lacking(field) => (
                     Some(field),
                     format!(
-                        "{species_name} {} is missing on a rank that has {species_name}; what is measured of it is null",
+                        "{species_name} {} was not lent, or {species_name} could not be lent, on a rank that has any; \
+                         what is measured of it is null",
                         field.name()
                     ),
                 ),

@@ -223,6 +223,7 @@ impl Buffers {
 }
 
 /// True when no number is NaN or infinite; without branches, so that it runs at the speed of memory.
+#[allow(clippy::eq_op)] // A number minus itself is the question that is asked here.
 #[multiversion(targets("x86_64+avx+avx2", "aarch64+neon"))]
 fn all_finite(values: &[f64]) -> bool {
     // x - x is zero for a finite x and NaN otherwise, and a NaN stays in the sum.

@@ -3,7 +3,9 @@
 use crate::format::{self, count};
 use crate::open::Failure;
 use crate::screen::harmless;
-use limnograph::reader::{Damage, DamageKind, LegSummary, Selection, SeriesReader, extent};
+use limnograph::reader::{
+    Damage, DamageKind, LegSummary, Selection, SeriesReader, TableView, extent,
+};
 use limnograph::series::journal::Gap;
 use std::io::Write;
 
@@ -30,7 +32,10 @@ pub fn tell(reader: &SeriesReader, out: &mut dyn Write) -> Result<u8, Failure> {
 
 fn tell_legs(reader: &SeriesReader, out: &mut dyn Write) -> Result<(), Failure> {
     writeln!(out, "\nlegs")?;
-    for leg in reader.legs() {
+    let legs = reader.legs();
+    let run = reader.table_with("run", Selection::Everything);
+    let last_number = legs.last().map(|leg| leg.number);
+    for leg in legs {
         let opened = leg
             .opened
             .map_or_else(|| "at an unknown time".to_string(), format::moment);
@@ -41,12 +46,13 @@ fn tell_legs(reader: &SeriesReader, out: &mut dyn Write) -> Result<(), Failure> 
             leg.number,
             harmless(version)
         )?;
-        writeln!(out, "     {}", rows_of(&leg))?;
-        if leg.superseded > 0 {
+        let steps = LegSteps::count(run.as_ref(), leg.number);
+        writeln!(out, "     {}", rows_of(&leg, &steps))?;
+        if steps.superseded > 0 {
             writeln!(
                 out,
                 "     {} of its steps superseded: a later leg did them over again; kept, and left out unless asked for",
-                leg.superseded
+                steps.superseded
             )?;
         }
         match &leg.end {
@@ -55,24 +61,55 @@ fn tell_legs(reader: &SeriesReader, out: &mut dyn Write) -> Result<(), Failure> 
                 "     closed by the host {}",
                 format::moment(end.closed)
             )?,
-            None => writeln!(
+            None if Some(leg.number) == last_number => writeln!(
                 out,
                 "     not closed: the host is running, or it was stopped without closing"
             )?,
+            None => writeln!(out, "     not closed: the host was stopped without closing")?,
         }
     }
     Ok(())
 }
 
-fn rows_of(leg: &LegSummary) -> String {
-    let (Some((first_step, first_time)), Some((last_step, last_time))) = (leg.first, leg.last)
-    else {
-        return "no row".to_string();
-    };
-    let (steps, rows) = (count(leg.records, "step"), count(leg.rows, "row"));
-    format!(
-        "{steps} with {rows} in all tables: step {first_step} at time {first_time} to step {last_step} at time {last_time}"
-    )
+/// The measured steps of a leg. Each has one row in the run table; a record that only tells of an event has none.
+#[derive(Default)]
+struct LegSteps {
+    number: usize,
+    superseded: usize,
+    first: Option<(u64, f64)>,
+    last: Option<(u64, f64)>,
+}
+
+impl LegSteps {
+    fn count(run: Option<&TableView<'_>>, leg: u32) -> LegSteps {
+        let mut steps = LegSteps::default();
+        let Some(run) = run else {
+            return steps;
+        };
+        for row in (0..run.rows()).filter(|&row| run.leg(row) == Some(leg)) {
+            let place = run.step(row).zip(run.time(row));
+            steps.number += 1;
+            steps.superseded += usize::from(run.is_superseded(row));
+            steps.first = steps.first.or(place);
+            steps.last = place.or(steps.last);
+        }
+        steps
+    }
+}
+
+fn rows_of(leg: &LegSummary, steps: &LegSteps) -> String {
+    let rows = count(leg.rows, "row");
+    match (steps.first, steps.last) {
+        (Some((step, time)), Some(_)) if steps.number == 1 => {
+            format!("1 step with {rows} in all tables: step {step} at time {time}")
+        }
+        (Some((first_step, first_time)), Some((last_step, last_time))) => format!(
+            "{} with {rows} in all tables: step {first_step} at time {first_time} to step {last_step} at time {last_time}",
+            count(steps.number, "step")
+        ),
+        _ if leg.rows > 0 => format!("no measured step; {rows} in other tables"),
+        _ => "no row".to_string(),
+    }
 }
 
 fn tell_tables(reader: &SeriesReader, out: &mut dyn Write) -> Result<(), Failure> {
@@ -182,13 +219,16 @@ fn tell_damage(
         };
         writeln!(out, "  {place}: {}", harmless(&damage.text))?;
     }
+    let steps = reader
+        .table_with("run", Selection::Everything)
+        .map_or(0, |run| run.rows());
     let rows: usize = reader.legs().iter().map(|leg| leg.rows).sum();
     writeln!(
         out,
         "\n{} of {} are good and stay readable; nothing was changed. If there is a copy of the damaged files \
          elsewhere, put it back.",
         count(rows, "row"),
-        count(reader.records(), "step")
+        count(steps, "step")
     )?;
     Ok(())
 }

@@ -74,7 +74,7 @@ fn write_table(view: &TableView<'_>, all_legs: bool, out: &mut dyn Write) -> io:
                 }
                 write_cell(&values.value(row - from), &merged.column, out)?;
             }
-            out.write_all(b"\r\n")?;
+            out.write_all(b"\n")?;
         }
         from = rows.end;
     }
@@ -107,7 +107,7 @@ fn write_header(view: &TableView<'_>, all_legs: bool, out: &mut dyn Write) -> io
         }
         write_text(name, out)?;
     }
-    out.write_all(b"\r\n")
+    out.write_all(b"\n")
 }
 
 fn write_cell(value: &Value, column: &Column, out: &mut dyn Write) -> io::Result<()> {

@@ -10,12 +10,14 @@ use limnograph::series::schema::{Column, Kind, ValueType};
 
 /// A heading and lines, of which the first ones matter most.
 pub struct Section {
-    /// What stands over the lines, ready to print.
+    /// What stands over the lines.
     pub title: String,
     /// Lines that explain the others and are shown whenever one of them is.
     pub legend: Vec<String>,
     /// Ready to print.
     pub lines: Vec<String>,
+    /// Columns for which the lines have no room.
+    pub columns_left_out: usize,
 }
 
 /// Gauges of the library itself; they are told in words at the top.
@@ -56,25 +58,19 @@ fn section(run: &TableView<'_>, gauge: &str, notes: &Notes, screen: &Screen) -> 
             nulls.push(column);
             continue;
         }
-        lines.push(layout.line(
+        lines.extend(layout.lines(
             screen,
             column,
             &latest,
             &run.column_rows(index, 0..run.rows()),
         ));
     }
-    if let Some(first) = nulls.first() {
-        lines.extend(unmeasured(
-            screen,
-            first,
-            nulls.len() - 1,
-            &notes.about(gauge),
-        ));
-    }
+    lines.extend(unmeasured(screen, &nulls, &notes.about(gauge)));
     Section {
-        title: screen.bold(&screen.cut(&harmless(gauge), screen.width)),
+        title: harmless(gauge),
         legend: Vec::new(),
         lines,
+        columns_left_out: 0,
     }
 }
 
@@ -97,7 +93,8 @@ impl Layout {
         };
         let longest = |length: &dyn Fn(&Column) -> usize| shown().map(length).max().unwrap_or(0);
         let name = longest(&|column| column.name.chars().count()).clamp(16, screen.width / 2 - 4);
-        let unit = longest(&|column| format::unit(&column.unit).chars().count()).clamp(4, 16);
+        let unit = longest(&|column| format::unit(&column.unit).chars().count());
+        let unit = unit.clamp(4, 16);
         let used = 2 + name + 1 + VALUE_WIDTH + 1 + unit + 1;
         Layout {
             name,
@@ -106,9 +103,28 @@ impl Layout {
         }
     }
 
-    fn line(&self, screen: &Screen, column: &Column, latest: &Value, all: &ColumnValues) -> String {
-        let name = screen.cut(&harmless(&column.name), self.name);
-        let value = screen.cut(&format::value(latest, column.kind), VALUE_WIDTH);
+    /// One line, or two on a page without end where the name needs one for itself.
+    fn lines(
+        &self,
+        screen: &Screen,
+        column: &Column,
+        latest: &Value,
+        all: &ColumnValues,
+    ) -> Vec<String> {
+        let is_endless = screen.lines.is_none();
+        let mut lines = Vec::new();
+        let mut name = harmless(&column.name);
+        if is_endless && name.chars().count() > self.name {
+            lines.extend(screen.wrap(&name, 2));
+            name.clear();
+        }
+        let name = screen.cut(&name, self.name);
+        let value = format::value(latest, column.kind);
+        if is_endless && column.value == ValueType::Text {
+            lines.extend(screen.wrap(&format!("{name}: {value}"), 2));
+            return lines;
+        }
+        let value = screen.cut(&value, VALUE_WIDTH);
         let unit = screen.cut(&format::unit(&column.unit), self.unit);
         let curve = match latest {
             // A vector shows itself rather than its past.
@@ -132,39 +148,48 @@ impl Layout {
         let (name_width, unit_width) = (self.name, self.unit);
         let line =
             format!("  {name:<name_width$} {value:>VALUE_WIDTH$} {unit:<unit_width$} {curve}");
-        line.trim_end().to_string()
+        lines.push(line.trim_end().to_string());
+        lines
     }
 }
 
-/// What was not measured, and why when that is known; on lines of its own when one is too short.
-fn unmeasured(screen: &Screen, first: &Column, others: usize, reasons: &[&str]) -> Vec<String> {
-    let others = if others > 0 {
-        format!(" and {others} more")
-    } else {
-        String::new()
+/// What was not measured, and what is noted about the gauge: which note goes with which column is not known.
+fn unmeasured(screen: &Screen, nulls: &[&Column], notes: &[&str]) -> Vec<String> {
+    let Some(first) = nulls.first() else {
+        return Vec::new();
     };
-    let mut lines = vec![format!("  {}{others}: not measured", harmless(&first.name))];
-    if screen.lines.is_none() {
+    let is_endless = screen.lines.is_none();
+    let others = nulls.len() - 1;
+    let mut text = if is_endless {
+        let names: Vec<&str> = nulls.iter().map(|column| column.name.as_str()).collect();
+        names.join(", ")
+    } else if others > 0 {
+        format!("{} and {others} more", first.name)
+    } else {
+        first.name.clone()
+    };
+    text.push_str(if others > 0 {
+        " are not measured"
+    } else {
+        " is not measured"
+    });
+    let mut lines = Vec::new();
+    if is_endless && !notes.is_empty() {
+        text.push_str("; the gauge notes:");
+        lines.extend(screen.wrap(&harmless(&text), 2));
         lines.extend(
-            reasons
+            notes
                 .iter()
-                .map(|reason| format!("    {}", harmless(reason))),
+                .flat_map(|note| screen.wrap(&harmless(note), 4)),
         );
-    } else if !reasons.is_empty() {
-        // What stands before a semicolon is the cause; the rest explains.
-        let causes: Vec<&str> = reasons
-            .iter()
-            .map(|reason| reason.split("; ").next().unwrap_or(reason))
-            .collect();
-        let causes = harmless(&causes.join(", "));
-        if lines[0].chars().count() + 2 + causes.chars().count() <= screen.width {
-            lines[0].push_str(&format!(": {causes}"));
-        } else {
-            lines.push(format!("    {causes}"));
+    } else {
+        if !notes.is_empty() {
+            // What stands before a semicolon is the cause; the rest explains.
+            let cause = |note: &&str| note.split("; ").next().unwrap_or_default().to_string();
+            let causes: Vec<String> = notes.iter().map(cause).collect();
+            text.push_str(&format!("; the gauge notes: {}", causes.join(", ")));
         }
+        lines.extend(screen.wrap(&harmless(&text), 2));
     }
-    lines
-        .iter()
-        .map(|line| screen.faint(&screen.cut(line, screen.width)))
-        .collect()
+    lines.iter().map(|line| screen.faint(line)).collect()
 }

@@ -28,16 +28,51 @@ pub fn section(table: &TableView<'_>, run: &TableView<'_>, screen: &Screen) -> O
         match column.kind {
             _ if is_clock(column) || OWN_GAUGES.contains(&column.gauge.as_str()) => {}
             Kind::Key => keys.push(index),
-            _ if column.length == 1 => others.push(index),
-            _ => {}
+            _ => others.push(index),
         }
     }
     if keys.is_empty() || table.rows() == 0 {
         return None;
     }
-    let items = Items::gather(table, &keys);
-    let (chosen, curve_of) = items.choose(&others, table, screen, &keys);
-    Some(items.draw(table, screen, &keys, &chosen, curve_of))
+    let items = Items::gather(table, &keys, screen);
+    let blocks = items.choose(&others, table, screen, &keys);
+    let left_out = others.len()
+        - blocks
+            .iter()
+            .map(|block| block.columns.len())
+            .sum::<usize>();
+    let by: Vec<&str> = keys
+        .iter()
+        .map(|&key| table.columns()[key].column.name.as_str())
+        .collect();
+    let mut blocks = blocks
+        .iter()
+        .map(|block| items.draw(table, screen, &keys, block));
+    let (legend, mut lines) = blocks.next()?;
+    for (more_legend, more_lines) in blocks {
+        lines.push(String::new());
+        lines.extend(more_legend);
+        lines.extend(more_lines);
+    }
+    if items.has_more {
+        let text = format!("and more; export --table {} has them all", table.name());
+        lines.extend(screen.wrap(&harmless(&text), 2));
+    }
+    Some(Section {
+        title: harmless(&format!("{}, by {}", table.name(), by.join(" and "))),
+        legend,
+        lines,
+        columns_left_out: left_out,
+    })
+}
+
+/// Columns that stand side by side behind the keys; one of them may have a curve.
+#[derive(Default)]
+struct Block {
+    columns: Vec<usize>,
+    curve_of: Option<usize>,
+    /// Characters in the curve.
+    trend: usize,
 }
 
 /// The rows of each item, in the order in which items first stand in the latest step.
@@ -45,11 +80,12 @@ struct Items {
     rows: Vec<Vec<usize>>,
     has_more: bool,
     columns: HashMap<usize, ColumnValues>,
+    widths: Vec<usize>,
     first_row: usize,
 }
 
 impl Items {
-    fn gather(table: &TableView<'_>, keys: &[usize]) -> Items {
+    fn gather(table: &TableView<'_>, keys: &[usize], screen: &Screen) -> Items {
         let first_row = table.rows().saturating_sub(ROWS);
         let columns: HashMap<usize, ColumnValues> = (0..table.columns().len())
             .map(|column| (column, table.column_rows(column, first_row..table.rows())))
@@ -77,113 +113,134 @@ impl Items {
             let last = rows.last().copied().unwrap_or(0);
             (std::cmp::Reverse(table.step(first_row + last)), last)
         });
-        Items {
+        let mut items = Items {
             rows,
             has_more,
             columns,
+            widths: Vec::new(),
             first_row,
-        }
-    }
-
-    /// How much a column changes over time, compared with its size, averaged over the items.
-    fn liveliness(&self, column: usize) -> f64 {
-        let values = &self.columns[&column];
-        let mut total = 0.0;
-        for rows in &self.rows {
-            let numbers: Vec<f64> = rows
-                .iter()
-                .filter_map(|&row| values.number(row))
-                .filter(|number| number.is_finite())
-                .collect();
-            let count = numbers.len().max(1) as f64;
-            let mean = numbers.iter().sum::<f64>() / count;
-            let size = numbers.iter().map(|number| number.abs()).sum::<f64>() / count;
-            if size > 0.0 {
-                total += numbers
-                    .iter()
-                    .map(|number| (number - mean).abs())
-                    .sum::<f64>()
-                    / count
-                    / size;
-            }
-        }
-        total / self.rows.len().max(1) as f64
-    }
-
-    /// Does the column grow from item to item, as radii do from shell to shell? Items that differ in another
-    /// key than the last are not compared.
-    fn is_scale(&self, column: usize, keys: &[usize]) -> bool {
-        let latest = || self.rows.iter().filter_map(|rows| rows.last().copied());
-        let group = |row: usize| {
-            keys[..keys.len() - 1]
-                .iter()
-                .map(move |key| self.columns[key].value(row))
         };
-        let mut pairs = latest()
-            .zip(latest().skip(1))
-            .filter(|&(one, next)| group(one).eq(group(next)))
-            .peekable();
-        let number = |row: usize| self.columns[&column].number(row);
-        pairs.peek().is_some()
-            && pairs.all(
-                |(one, next)| matches!((number(one), number(next)), (Some(a), Some(b)) if a < b),
-            )
+        items.widths = (0..table.columns().len())
+            .map(|column| items.width(table, column, screen))
+            .collect();
+        items
     }
 
-    /// As many columns as fit, and which of them gets a curve: first the one that tells how large the items are,
-    /// then the liveliest.
+    /// Does the column stay the same for each item, as the radii of a shell do?
+    fn is_constant(&self, column: usize) -> bool {
+        let values = &self.columns[&column];
+        self.rows.iter().all(|rows| {
+            let mut present = rows
+                .iter()
+                .filter(|&&row| !values.is_null(row))
+                .map(|&row| values.value(row));
+            present
+                .next()
+                .is_none_or(|first| present.all(|value| value == first))
+        })
+    }
+
+    /// Columns that tell what the item is rather than what was measured of it: those right behind the keys that
+    /// never change and share a unit.
+    fn describing(&self, columns: &[usize], table: &TableView<'_>) -> usize {
+        let unit = |column: usize| &table.columns()[column].column.unit;
+        let Some(&first) = columns.first() else {
+            return 0;
+        };
+        columns
+            .iter()
+            .take_while(|&&column| {
+                let kind = table.columns()[column].column.kind;
+                kind == Kind::Instant && unit(column) == unit(first) && self.is_constant(column)
+            })
+            .count()
+    }
+
+    /// Which columns are shown, in blocks one under the other. On a page without end these are all; else one
+    /// block: the first column that describes the item, then what was measured in the order of the table.
     fn choose(
         &self,
         columns: &[usize],
         table: &TableView<'_>,
         screen: &Screen,
         keys: &[usize],
-    ) -> (Vec<usize>, Option<usize>) {
-        // Rounded, so that columns that go alike stay in the order of the table.
-        let life = |column: usize| (self.liveliness(column) * 100.0).round() as u64;
-        let mut ranked: Vec<(u64, usize)> = columns
-            .iter()
-            .map(|&column| (life(column), column))
-            .collect();
-        ranked.sort_by_key(|&(life, column)| (std::cmp::Reverse(life), column));
-        let liveliest = ranked.first().map(|&(_, column)| column);
-        let scale = columns
+    ) -> Vec<Block> {
+        let (describing, measured) = columns.split_at(self.describing(columns, table));
+        let lively = measured
             .iter()
             .copied()
-            .find(|&column| self.is_scale(column, keys));
-        let ranked = ranked.into_iter().map(|(_, column)| column);
-        let order = scale
-            .into_iter()
-            .chain(ranked.filter(|&column| Some(column) != scale));
-        let used: usize = keys.iter().map(|&key| self.width(table, key) + 2).sum();
-        let mut room = screen.width.saturating_sub(used + 1 + TREND);
-        let mut chosen = Vec::new();
-        for column in order {
-            let width = self.width(table, column) + 2;
-            if width <= room {
-                room -= width;
+            .find(|&column| !self.is_constant(column));
+        let curve_of = lively.or(measured.first().copied());
+        let used: usize = keys.iter().map(|&key| self.widths[key] + 2).sum();
+        let room = screen.width.saturating_sub(used);
+        let needed = |column: usize, trend: usize| {
+            let curve = if curve_of == Some(column) {
+                trend + 1
+            } else {
+                0
+            };
+            self.widths[column] + 2 + curve
+        };
+        if screen.lines.is_none() {
+            let mut blocks = vec![Block::default()];
+            let mut left = room;
+            for &column in columns {
+                let width = needed(column, TREND);
+                if width > left && blocks.last().is_some_and(|block| !block.columns.is_empty()) {
+                    blocks.push(Block::default());
+                    left = room;
+                }
+                left = left.saturating_sub(width);
+                if let Some(block) = blocks.last_mut() {
+                    block.columns.push(column);
+                    block.curve_of = block.curve_of.or(curve_of.filter(|&of| of == column));
+                    block.trend = TREND;
+                }
+            }
+            return blocks;
+        }
+        // The first measured column comes before anything else; for it the curve is made shorter, then what
+        // describes the item is left out.
+        let main = measured
+            .first()
+            .map_or(0, |&column| self.widths[column] + 2);
+        let sign = describing.first().copied();
+        let sign = sign.filter(|&column| self.widths[column] + 2 + main <= room);
+        let sign_width = sign.map_or(0, |column| self.widths[column] + 2);
+        let free = room.saturating_sub(main + sign_width);
+        let trend = TREND.min(free.saturating_sub(1));
+        let mut left = room.saturating_sub(sign_width);
+        let mut chosen: Vec<usize> = sign.into_iter().collect();
+        let rest = describing.iter().filter(|&&column| Some(column) != sign);
+        for &column in measured.iter().chain(rest) {
+            let width = needed(column, trend);
+            if width <= left || (chosen.is_empty() && measured.first() == Some(&column)) {
+                left = left.saturating_sub(width);
                 chosen.push(column);
             }
         }
         chosen.sort_unstable();
-        let curve_of = liveliest.filter(|column| chosen.contains(column));
-        (chosen, curve_of)
+        vec![Block {
+            curve_of: curve_of.filter(|column| trend > 0 && chosen.contains(column)),
+            columns: chosen,
+            trend,
+        }]
     }
 
-    fn width(&self, table: &TableView<'_>, column: usize) -> usize {
+    fn width(&self, table: &TableView<'_>, column: usize, screen: &Screen) -> usize {
+        let longest_text = if screen.lines.is_none() {
+            screen.width / 2
+        } else {
+            20
+        };
         let described = &table.columns()[column].column;
         let values = &self.columns[&column];
-        let longest = self
-            .rows
-            .iter()
-            .take(64)
-            .filter_map(|rows| rows.last())
-            .map(|&row| {
-                format::value(&values.value(row), described.kind)
-                    .chars()
-                    .count()
-                    .min(20)
-            });
+        let longest = self.rows.iter().filter_map(|rows| rows.last()).map(|&row| {
+            format::value(&values.value(row), described.kind)
+                .chars()
+                .count()
+                .min(longest_text)
+        });
         let name = described.name.chars().count();
         let unit = format::unit(&described.unit).chars().count();
         longest.max().unwrap_or(0).max(name).max(unit)
@@ -194,15 +251,15 @@ impl Items {
         table: &TableView<'_>,
         screen: &Screen,
         keys: &[usize],
-        chosen: &[usize],
-        curve_of: Option<usize>,
-    ) -> Section {
-        let shown: Vec<usize> = keys.iter().chain(chosen).copied().collect();
+        block: &Block,
+    ) -> (Vec<String>, Vec<String>) {
+        let (curve_of, trend) = (block.curve_of, block.trend);
+        let shown: Vec<usize> = keys.iter().chain(&block.columns).copied().collect();
         // A curve stands behind the column that it belongs to.
         let row_of = |cell: &dyn Fn(usize) -> String, curve: &str| {
             let mut line = String::new();
             for &column in &shown {
-                let width = self.width(table, column);
+                let width = self.widths[column];
                 let text = screen.cut(&cell(column), width);
                 if matches!(self.columns[&column], ColumnValues::Text(_)) {
                     line.push_str(&format!("  {text:<width$}"));
@@ -210,7 +267,7 @@ impl Items {
                     line.push_str(&format!("  {text:>width$}"));
                 }
                 if curve_of == Some(column) {
-                    line.push_str(&format!(" {curve:<TREND$}"));
+                    line.push_str(&format!(" {curve:<trend$}"));
                 }
             }
             line.trim_end().to_string()
@@ -224,7 +281,7 @@ impl Items {
                 let values = &self.columns[&column];
                 trend::curve(
                     rows.iter().map(|&row| values.number(row)),
-                    TREND,
+                    trend,
                     screen.is_ascii,
                 )
             });
@@ -239,27 +296,11 @@ impl Items {
                 .map_or(String::new(), |step| format!("  (step {step})"));
             screen.cut(&format!("{}{age}", row_of(&cell, &curve)), screen.width)
         };
-        let mut lines: Vec<String> = self.rows.iter().map(line_of).collect();
-        if self.has_more {
-            lines.push(format!(
-                "  and more; export --table {} has them all",
-                table.name()
-            ));
-        }
-        let mut legend = vec![screen.faint(&names)];
+        let lines: Vec<String> = self.rows.iter().map(line_of).collect();
+        let mut legend = vec![screen.faint(&screen.cut(&names, screen.width))];
         if !units.is_empty() {
-            legend.push(screen.faint(&units));
+            legend.push(screen.faint(&screen.cut(&units, screen.width)));
         }
-        let by: Vec<&str> = keys
-            .iter()
-            .map(|&key| described(key).name.as_str())
-            .collect();
-        let title = harmless(&format!("{}, by {}", table.name(), by.join(" and ")));
-        let title = screen.bold(&screen.cut(&title, screen.width));
-        Section {
-            title,
-            legend,
-            lines,
-        }
+        (legend, lines)
     }
 }

@@ -75,7 +75,7 @@ struct Sight {
 
 /// Write a table of a series in a format that other programs read
 ///
-/// CSV as RFC 4180 has it, one line a row, the first with names and units: `time [Gyr]`; a pure number has its
+/// CSV as RFC 4180 has it but for plain line ends, one line a row, the first with names and units: `time [Gyr]`; a pure number has its
 /// name alone. A vector takes a cell for each of its values: `name.0`, `name.1`, … Numbers are the shortest that
 /// read back to the same bits; null is an empty cell, an empty text is "", a NaN is nan, infinities are inf
 /// and -inf. Rows that a later leg did over again are left out, unless --all-legs is given.

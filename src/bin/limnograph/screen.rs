@@ -78,6 +78,51 @@ impl Screen {
             .collect()
     }
 
+    /// The text on as many lines as it needs, broken between words; the first begins after `indent` spaces, the
+    /// others two further in.
+    pub fn wrap(&self, text: &str, indent: usize) -> Vec<String> {
+        let text = if self.is_ascii {
+            to_ascii(text)
+        } else {
+            text.to_string()
+        };
+        let first = " ".repeat(indent);
+        let further = " ".repeat(indent + 2);
+        let mut lines = Vec::new();
+        let mut line = first;
+        let mut used = indent;
+        let mut is_begun = false;
+        // Blanks within a text are kept: they set things apart.
+        for word in text.split_inclusive(' ') {
+            let bare = word.trim_end().chars().count();
+            if is_begun && used + bare > self.width {
+                lines.push(line.trim_end().to_string());
+                line = further.clone();
+                used = indent + 2;
+                is_begun = false;
+            }
+            if !is_begun && word == " " && !lines.is_empty() {
+                continue;
+            }
+            // A word longer than a line, such as a path, is broken anywhere.
+            for character in word.chars() {
+                if used >= self.width {
+                    if character == ' ' {
+                        continue;
+                    }
+                    lines.push(line.trim_end().to_string());
+                    line = further.clone();
+                    used = indent + 2;
+                }
+                line.push(character);
+                used += 1;
+            }
+            is_begun = true;
+        }
+        lines.push(line.trim_end().to_string());
+        lines
+    }
+
     /// `left` and `right` at the two ends of a line.
     pub fn ends(&self, left: &str, right: &str) -> String {
         let right = self.cut(right, self.width / 2);
@@ -105,7 +150,6 @@ fn is_ascii_locale() -> bool {
         .is_some_and(|value| value == "C" || value == "POSIX")
 }
 
-/// Control characters are shown as a mark everywhere: a text in a series must not steer a terminal.
 fn to_ascii(text: &str) -> String {
     text.chars()
         .map(|character| if character.is_ascii() { character } else { '?' })
@@ -123,4 +167,25 @@ pub fn harmless(text: &str) -> String {
             }
         })
         .collect()
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_long_text_is_broken_between_words_and_keeps_all_of_them() {
+        let screen = Screen {
+            width: 12,
+            lines: None,
+            is_ascii: false,
+            has_emphasis: false,
+        };
+        assert_eq!(screen.wrap("low water", 1), [" low water"]);
+        assert_eq!(
+            screen.wrap("low water at the saltmarsh-station", 1),
+            [" low water", "   at the", "   saltmarsh", "   -station"]
+        );
+        assert_eq!(screen.wrap("a   b", 0), ["a   b"]);
+    }
 }

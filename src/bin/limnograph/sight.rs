@@ -19,8 +19,10 @@ const REDSHIFT: &str = "redshift";
 const AGE: &str = "age";
 const LIBRARY_SECONDS: &str = "library_seconds";
 const HOST_SECONDS: &str = "host_seconds";
-/// A host that has not entered a row for this many of its usual intervals may have stopped.
-const QUIET_INTERVALS: u64 = 20;
+/// A host that has not entered a row for longer than this many of its usual intervals may have stopped.
+const QUIET_INTERVALS: u64 = 5;
+/// A shorter silence than this (in milliseconds) says nothing.
+const SHORT_SILENCE: u64 = 60_000;
 
 /// Writes the screen.
 pub fn show(reader: &SeriesReader, screen: &Screen, out: &mut dyn Write) -> Result<(), Failure> {
@@ -55,23 +57,31 @@ fn head(reader: &SeriesReader, run: &TableView<'_>, notes: &Notes, screen: &Scre
         .path()
         .file_name()
         .map_or_else(String::new, |name| name.to_string_lossy().into_owned());
-    let mut lines = vec![
-        screen.bold(&screen.ends(&format!(" {}", host_name(reader)), &harmless(&path))),
-        screen.faint(&"~".repeat(screen.width)),
-    ];
+    let (host, path) = (host_name(reader), harmless(&path));
+    let mut lines = if host.chars().count() + path.chars().count() + 2 <= screen.width
+        && path.chars().count() <= screen.width / 2
+    {
+        vec![screen.ends(&format!(" {host}"), &path)]
+    } else {
+        let mut lines = screen.wrap(&host, 1);
+        lines.extend(screen.wrap(&path, 1));
+        lines
+    };
+    for line in &mut lines {
+        *line = screen.bold(line);
+    }
+    lines.push(screen.faint(&"~".repeat(screen.width)));
     if run.rows() == 0 {
         lines.push(" no row has been entered yet".to_string());
     } else {
-        lines.push(screen.cut(&format!(" {}", clock(reader, run)), screen.width));
+        lines.extend(screen.wrap(&clock(reader, run), 1));
     }
-    lines.push(screen.cut(&format!(" {}", standing(reader, run)), screen.width));
-    lines.extend(cost(run).map(|cost| screen.cut(&format!(" {cost}"), screen.width)));
-    lines.extend(
-        health(reader)
-            .into_iter()
-            .map(|line| screen.bold(&screen.cut(&format!(" {line}"), screen.width))),
-    );
-    lines.extend(notices(run).map(|line| screen.cut(&format!(" {line}"), screen.width)));
+    lines.extend(screen.wrap(&standing(reader, run), 1));
+    lines.extend(cost(run).iter().flat_map(|cost| screen.wrap(cost, 1)));
+    let health = health(reader);
+    let health = health.iter().flat_map(|line| screen.wrap(line, 1));
+    lines.extend(health.map(|line| screen.bold(&line)));
+    lines.extend(notices(run).flat_map(|line| screen.wrap(&line, 1)));
     let mut known = gauges::names(run);
     let tables = reader.tables();
     let tables: Vec<_> = tables
@@ -82,7 +92,8 @@ fn head(reader: &SeriesReader, run: &TableView<'_>, notes: &Notes, screen: &Scre
     lines.extend(
         notes
             .last_but(&known)
-            .map(|note| screen.cut(&format!(" {}", harmless(&note)), screen.width)),
+            .iter()
+            .flat_map(|note| screen.wrap(&harmless(note), 1)),
     );
     lines
 }
@@ -130,43 +141,60 @@ fn clock(reader: &SeriesReader, run: &TableView<'_>) -> String {
     parts.join("   ")
 }
 
-/// How many rows and legs, and whether the host still writes.
+/// How many rows and legs, and whether the host still writes. A host that was killed leaves no word, so that it
+/// runs is only inferred.
 fn standing(reader: &SeriesReader, run: &TableView<'_>) -> String {
     let legs = reader.legs();
-    let rows = format::count(run.rows(), "row");
-    let mut text = if legs.len() > 1 {
-        format!("{rows} in {} legs", legs.len())
-    } else {
-        rows
-    };
-    let is_closed = legs.last().is_some_and(|leg| leg.end.is_some());
-    let entered = run.rows().checked_sub(1).and_then(|last| run.entered(last));
-    if let Some(entered) = entered {
-        let now = now_milliseconds();
-        let since = now.saturating_sub(entered);
-        text.push_str(&format!(", the last {} ago", format::age(since)));
-        if !is_closed && since > quiet_time(run) {
-            text.push_str("; the host has not closed it, but seems to have stopped");
-            return text;
-        }
+    let mut text = format::count(run.rows(), "row");
+    if legs.len() > 1 {
+        text.push_str(&format!(" in {} legs", legs.len()));
     }
-    text.push_str(if is_closed {
-        "; closed by the host"
-    } else {
-        "; the host is running"
-    });
+    let now = now_milliseconds();
+    let entered = run.rows().checked_sub(1).and_then(|last| run.entered(last));
+    let is_closed = legs.last().is_some_and(|leg| leg.end.is_some());
+    // A leg that has just begun is a sign of life as well.
+    let sign = entered.max(legs.last().and_then(|leg| leg.opened));
+    let silence = sign.map(|sign| now.saturating_sub(sign));
+    let row_age = entered.map(|entered| now.saturating_sub(entered));
+    text.push_str(&signs_of_life(is_closed, row_age, silence, quiet_time(run)));
     text
 }
 
-/// A silence after which a host that writes has probably stopped: many of its usual intervals, at least a minute.
+/// What can be said of the host, from the age of the latest row and of the latest sign of life.
+fn signs_of_life(
+    is_closed: bool,
+    row_age: Option<u64>,
+    silence: Option<u64>,
+    quiet_time: u64,
+) -> String {
+    if let Some(silence) = silence.filter(|&silence| !is_closed && silence > quiet_time) {
+        return format!(
+            "; the host has not closed it and has not written for {}",
+            format::age(silence)
+        );
+    }
+    let row = row_age.map_or(String::new(), |age| {
+        format!(", the last {} ago", format::age(age))
+    });
+    let host = match (is_closed, silence) {
+        (true, _) => "closed by the host",
+        (false, Some(_)) => "not closed, the host seems to be running",
+        (false, None) => "not closed by the host",
+    };
+    format!("{row}; {host}")
+}
+
+/// A silence after which a host that writes has probably stopped: several of its usual intervals in the latest
+/// leg, at least a minute.
 fn quiet_time(run: &TableView<'_>) -> u64 {
     let last = run.rows().saturating_sub(1);
-    let recent = last.saturating_sub(50);
-    let interval = match (run.entered(recent), run.entered(last)) {
-        (Some(from), Some(to)) if last > recent => to.saturating_sub(from) / (last - recent) as u64,
-        _ => 60_000,
-    };
-    (interval * QUIET_INTERVALS).max(60_000)
+    let leg = run.leg(last);
+    let recent = (last.saturating_sub(50)..last).find(|&row| run.leg(row) == leg);
+    let interval = recent.and_then(|recent| {
+        let stretch = run.entered(last)?.saturating_sub(run.entered(recent)?);
+        Some(stretch / (last - recent) as u64)
+    });
+    (interval.unwrap_or(0).saturating_mul(QUIET_INTERVALS)).max(SHORT_SILENCE)
 }
 
 /// What the library costs the host, over the latest leg.
@@ -254,16 +282,28 @@ fn write_sections(
             writeln!(out)?;
         }
         let left_out = section.lines.len() - lines;
-        if left_out > 0 {
-            writeln!(
-                out,
-                "{} {}",
-                section.title,
-                screen.faint(&format!("({left_out} more with --all)"))
-            )?;
-        } else {
-            writeln!(out, "{}", section.title)?;
+        let remark = match (left_out, section.columns_left_out) {
+            (0, 0) => String::new(),
+            (_, 0) => format!(" ({left_out} more with --all)"),
+            (0, columns) => format!(" ({} with --all)", more_columns(columns)),
+            (_, columns) => format!(
+                " ({}, {} with --all)",
+                format::count(left_out, "more row"),
+                more_columns(columns)
+            ),
+        };
+        let room = screen.width.saturating_sub(remark.chars().count());
+        let mut title = section.title.as_str();
+        if title.chars().count() > room {
+            // The keys stand over their columns as well.
+            title = title.split(", by ").next().unwrap_or(title);
         }
+        writeln!(
+            out,
+            "{}{}",
+            screen.bold(&screen.cut(title, room)),
+            screen.faint(&remark)
+        )?;
         for line in section
             .legend
             .iter()
@@ -274,6 +314,10 @@ fn write_sections(
         }
     }
     Ok(())
+}
+
+fn more_columns(number: usize) -> String {
+    format::count(number, "more column")
 }
 
 /// How many lines each section gets.
@@ -299,5 +343,31 @@ fn share(sections: &[Section], room: Option<usize>) -> Vec<usize> {
         if left == before {
             return shown;
         }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn that_a_host_runs_is_never_told_as_a_fact() {
+        let told = |is_closed, age| signs_of_life(is_closed, Some(age), Some(age), 60_000);
+        assert_eq!(
+            told(false, 29_000),
+            ", the last 29 s ago; not closed, the host seems to be running"
+        );
+        assert_eq!(
+            told(false, 240_000),
+            "; the host has not closed it and has not written for 4 min"
+        );
+        assert_eq!(
+            told(true, 240_000),
+            ", the last 4 min ago; closed by the host"
+        );
+        assert_eq!(
+            signs_of_life(false, None, None, 60_000),
+            "; not closed by the host"
+        );
     }
 }
