@@ -62,8 +62,8 @@ impl MpiTeam {
     /// Joins the members of a communicator held by a C host. Collective over it.
     ///
     /// The communicator is duplicated (the host's attribute copy callbacks run, as for any duplication).
-    /// While that happens it and `MPI_COMM_SELF` return errors instead of using the host's error handlers,
-    /// which are restored before this returns. `host_library` is the host's compile-time name of its MPI
+    /// While that happens the host's communicator returns errors instead of using the host's error handler,
+    /// which is restored before this returns. `host_library` is the host's compile-time name of its MPI
     /// library (`Open MPI 4.1`), empty when unknown.
     ///
     /// # Safety

@@ -140,20 +140,16 @@ pub(super) fn no_request() -> ffi::MPI_Request {
 pub(super) fn join(host: ffi::MPI_Comm) -> Result<MpiTeam, JoinError> {
     // SAFETY: a constant of the bindings.
     let null = unsafe { ffi::RSMPI_COMM_NULL };
-    // A handle that is out of range may come back from its Fortran form as zero.
-    if host == null || host.0 as usize == 0 {
+    if host == null || !looks_like_a_communicator(host) {
         return Err(JoinError::BadCommunicator(
             "the communicator is MPI_COMM_NULL, or no communicator at all: pass one that this rank is a member of"
                 .into(),
         ));
     }
-    let comm = {
-        // Errors that belong to no communicator, such as a handle that is none, come to this one (MPI 4).
-        // SAFETY: a constant of the bindings.
-        let _own = HostHandler::replace(unsafe { ffi::RSMPI_COMM_SELF })?;
-        let _host = HostHandler::replace(host)?;
-        duplicate(host)?
-    };
+    let handler = HostHandler::replace(host)?;
+    let comm = duplicate(host);
+    drop(handler);
+    let comm = comm?;
 
     let (made, operation) = make_operation();
     let mut everywhere: c_int = 0;
@@ -198,6 +194,20 @@ pub(super) fn join(host: ffi::MPI_Comm) -> Result<MpiTeam, JoinError> {
             team.failure = Some(error.to_string());
             Err(error)
         }
+    }
+}
+
+/// MPI would end the job over a handle that is none, whatever the error handlers.
+fn looks_like_a_communicator(handle: ffi::MPI_Comm) -> bool {
+    // SAFETY: a constant of the bindings.
+    let known = unsafe { ffi::RSMPI_COMM_SELF };
+    if size_of_val(&handle) == size_of::<c_int>() {
+        // MPICH and its descendants number their handles; these bits say of what kind one is.
+        let kind = |handle: ffi::MPI_Comm| handle.0 as usize as u32 & 0x3C00_0000;
+        kind(handle) == kind(known)
+    } else {
+        // Where handles are addresses, one that is out of range comes back from its Fortran form as zero.
+        handle.0 as usize != 0
     }
 }
 
