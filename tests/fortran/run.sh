@@ -67,7 +67,7 @@ for source in tests/fortran/*"$filter"*.f90; do
         try "$name" "$program"
     else
         for count in $ranks; do
-            try "${name}_on_$count" "${MPIRUN:-mpirun}" --oversubscribe -n "$count" "$program"
+            try "${name}_on_$count" scripts/mpirun.sh "$count" "$program"
         done
     fi
 done
