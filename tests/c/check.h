@@ -330,9 +330,10 @@ static UNUSED struct sheet *read_back(const char *series, const char *table)
     const char *program = getenv("LIMNOGRAPH");
     struct sheet *sheet = calloc(1, sizeof *sheet);
     sheet->before = check_sheets, check_sheets = sheet;
-    snprintf(path, sizeof path, "%s/read_back.csv", check_folder);
-    snprintf(command, sizeof command, "'%s' export '%s' --to csv --table %s -o '%s' 2>'%s/read_back.txt'",
-             program ? program : "limnograph", series, table, path, check_folder);
+    /* Every rank may read at the same time. */
+    snprintf(path, sizeof path, "%s/read_back_%ld.csv", check_folder, (long)getpid());
+    snprintf(command, sizeof command, "'%s' export '%s' --to csv --table %s -o '%s' 2>'%s.txt'",
+             program ? program : "limnograph", series, table, path, path);
     unlink(path);
     int status = system(command);
     sheet->text = status == 0 ? read_file(path) : NULL;
