@@ -151,7 +151,7 @@ demo: prepare-hosts $(SALTMARSH) $(PROGRAM)
 
 # --- Tests --------------------------------------------------------------------------------------------
 
-test:
+test: prepare-tests
 	@+scripts/test.sh format lints rust mpi hosts python
 
 test-format:

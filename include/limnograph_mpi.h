@@ -11,10 +11,18 @@
 /* What this mpi.h says of itself, so that a mixture of two MPI libraries is refused and not tried. */
 #define LIMNO_MPI_STRING_(x) #x
 #define LIMNO_MPI_STRING(x) LIMNO_MPI_STRING_(x)
-#if defined(OMPI_MAJOR_VERSION)
+#if defined(CRAY_MPICH_VERSION) /* descendants first: they also define what they descend from */
+#define LIMNO_MPI_IDENTITY "Cray MPICH " LIMNO_MPI_STRING(CRAY_MPICH_VERSION)
+#elif defined(I_MPI_VERSION)
+#define LIMNO_MPI_IDENTITY "Intel MPI " LIMNO_MPI_STRING(I_MPI_VERSION)
+#elif defined(MVAPICH2_VERSION)
+#define LIMNO_MPI_IDENTITY "MVAPICH2 " LIMNO_MPI_STRING(MVAPICH2_VERSION)
+#elif defined(MVAPICH_VERSION)
+#define LIMNO_MPI_IDENTITY "MVAPICH " LIMNO_MPI_STRING(MVAPICH_VERSION)
+#elif defined(OMPI_MAJOR_VERSION)
 #define LIMNO_MPI_IDENTITY "Open MPI " LIMNO_MPI_STRING(OMPI_MAJOR_VERSION) "." LIMNO_MPI_STRING(OMPI_MINOR_VERSION)
 #elif defined(MPICH_VERSION)
-#define LIMNO_MPI_IDENTITY "MPICH " MPICH_VERSION
+#define LIMNO_MPI_IDENTITY "MPICH " LIMNO_MPI_STRING(MPICH_VERSION)
 #else
 #define LIMNO_MPI_IDENTITY ""
 #endif

@@ -195,6 +195,8 @@ mod tests {
         for (short, long) in [
             ("Open MPI 4.1", OPEN_MPI),
             ("MPICH 4.0.2", MPICH),
+            // As a header has it that makes a string of a macro that is one already.
+            ("MPICH \"4.0.2\"", MPICH),
             ("Intel MPI 2021.9.0", INTEL),
             ("MVAPICH2 2.3.7", MVAPICH2),
             ("MVAPICH 3.0", MVAPICH3),
