@@ -3,10 +3,10 @@
 #
 #   scripts/prepare.sh [base] [mpi] [hosts] [tests]      (all when none is named)
 #
-#   base    the library and the program: Rust, a C compiler, binutils
+#   base    the library and the program: Rust (1.95 or newer), a C compiler, binutils
 #   mpi     the library with MPI: an MPI compiler, libclang
 #   hosts   the programs in ffi-examples: mpirun, an MPI Fortran compiler, FFTW with MPI
-#   tests   python3 with venv, clang, a C++ compiler, valgrind, pkg-config
+#   tests   rustfmt and clippy, python3 with venv, clang, a C++ compiler, valgrind, pkg-config
 #
 # What is missing is installed with apt when this runs as root or may use sudo without a password. Otherwise
 # the packages to ask an administrator for are printed, and the exit status is 1. The verdict is remembered in
@@ -28,7 +28,7 @@ has() { command -v "$1" >/dev/null 2>&1; }
 # Where the tools stand and what they are: when this has not changed, neither has the verdict.
 fingerprint() {
     echo "$PATH"
-    for tool in cargo "$CC" "$MPICC" "$MPIF90" mpirun python3 clang "${CXX:-c++}" valgrind pkg-config ld; do
+    for tool in cargo rustc "$CC" "$MPICC" "$MPIF90" mpirun python3 clang "${CXX:-c++}" valgrind pkg-config ld; do
         path=$(command -v "$tool" 2>/dev/null) && ls -lL "$path"
     done
     cat "$0"
@@ -40,6 +40,12 @@ builds() {
     shift 3
     printf '%s\n' "$text" >"$work/$file"
     (cd "$work" && "$compiler" "$file" -o probe "$@") >"$work/log" 2>&1
+}
+
+# Rust 1.95 or newer? rustup puts the pinned version in place by itself.
+has_rust() {
+    minor=$(cargo --version 2>/dev/null | sed -n 's/^cargo 1\.\([0-9]*\)\..*/\1/p')
+    [ "${minor:-0}" -ge 95 ] && has rustc
 }
 
 has_libclang() {
@@ -60,6 +66,8 @@ has_venv() {
 look() {
     missing=
     if wants base; then
+        # The packages are those of Debian 12.
+        has_rust || lacks "Rust 1.95 or newer, by rustup (https://rustup.rs) or as packages" rustc-web cargo-web
         builds "$CC" c.c 'int main(void) { return 0; }' || lacks "a C compiler ($CC)" gcc libc6-dev
         has ld && has objcopy && has readelf && has ar || lacks "binutils" binutils
     fi
@@ -77,6 +85,8 @@ end program' || lacks "an MPI Fortran compiler ($MPIF90)" gfortran libopenmpi-de
 int main(void) { fftw_mpi_init(); return 0; }' -lfftw3_mpi -lfftw3 -lm || lacks "FFTW with MPI" libfftw3-dev libfftw3-mpi-dev
     fi
     if wants tests; then
+        cargo fmt --version >/dev/null 2>&1 && cargo clippy --version >/dev/null 2>&1 ||
+            lacks "rustfmt and clippy" rustfmt-web rust-web-clippy
         has_venv || lacks "python3, 3.11 or newer, with venv" python3 python3-venv
         has clang || lacks "clang" clang
         builds "${CXX:-c++}" cpp.cpp 'int main() { return 0; }' || lacks "a C++ compiler (${CXX:-c++})" g++
@@ -113,14 +123,6 @@ that MPI library, and LLVM; MPICC and MPIF90 name other compiler wrappers, LIBCL
 TEXT
     exit 1
 }
-
-if ! has cargo; then
-    cat >&2 <<TEXT
-Rust is missing: cargo is not in PATH. Install it with rustup (https://rustup.rs); the version that is needed
-then installs itself.
-TEXT
-    exit 1
-fi
 
 mkdir -p "$build"
 # With make -j several of us may run.
