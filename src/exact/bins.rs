@@ -8,16 +8,17 @@ use super::total::Total;
 use super::window::{self, ROOM, Window};
 
 /// Values that are split at a time.
-const CHUNK: usize = 256;
+const CHUNK: usize = 128;
 
-/// The words of a chunk of values.
+/// The words of a chunk of values of one quantity.
+#[derive(Clone)]
 struct Words {
     high: [i64; CHUNK],
     low: [i64; CHUNK],
 }
 
-impl Default for Words {
-    fn default() -> Self {
+impl Words {
+    fn new() -> Words {
         Words {
             high: [0; CHUNK],
             low: [0; CHUNK],
@@ -28,14 +29,13 @@ impl Default for Words {
 /// Exact sums of several quantities in each of several bins, and the number of contributions in each.
 pub struct Bins {
     quantities: usize,
-    /// For each bin and quantity the two words that are not in the digits yet.
-    pending: Vec<[i64; 2]>,
-    /// Contributions of each bin since its words were last taken up.
-    since: Vec<u32>,
+    /// For each bin the number of contributions that are not in the digits yet, and each quantity's two words.
+    pending: Vec<i64>,
     digits: Vec<Digits>,
     counts: Vec<u64>,
     windows: Vec<Option<Window>>,
-    words: Box<Words>,
+    /// One for each quantity.
+    words: Vec<Words>,
     left_out: u64,
     touched: bool,
 }
@@ -45,12 +45,11 @@ impl Bins {
     pub fn new(bins: usize, quantities: usize) -> Bins {
         Bins {
             quantities,
-            pending: vec![[0; 2]; bins * quantities],
-            since: vec![0; bins],
+            pending: vec![0; bins * (1 + 2 * quantities)],
             digits: vec![Digits::default(); bins * quantities],
             counts: vec![0; bins],
             windows: vec![None; quantities],
-            words: Box::default(),
+            words: vec![Words::new(); quantities],
             left_out: 0,
             touched: false,
         }
@@ -63,76 +62,53 @@ impl Bins {
     /// When a bin does not exist, or the lengths differ: a mistake of ours.
     pub fn add(&mut self, bins: &[u32], values: &[&[f64]]) {
         assert_eq!(values.len(), self.quantities);
+        self.touched |= !bins.is_empty();
         for start in (0..bins.len()).step_by(CHUNK) {
             let end = (start + CHUNK).min(bins.len());
-            self.count(&bins[start..end]);
             for (quantity, values) in values.iter().enumerate() {
-                self.add_chunk(quantity, &bins[start..end], &values[start..end]);
+                self.split(quantity, &bins[start..end], &values[start..end]);
+            }
+            // The usual numbers of quantities have loops of their own.
+            match self.quantities {
+                1 => self.scatter::<3>(&bins[start..end]),
+                2 => self.scatter::<5>(&bins[start..end]),
+                4 => self.scatter::<9>(&bins[start..end]),
+                _ => self.scatter_any(&bins[start..end]),
             }
         }
     }
 
-    fn count(&mut self, bins: &[u32]) {
-        self.touched = true;
-        for &bin in bins {
-            let bin = bin as usize;
-            // Those of this chunk that are counted and not yet added find room beyond it.
-            if self.since[bin] as usize >= ROOM {
-                self.take_up(bin);
-                self.counts[bin] += u64::from(std::mem::take(&mut self.since[bin]));
-            }
-            self.since[bin] += 1;
-        }
-    }
-
-    fn add_chunk(&mut self, quantity: usize, bins: &[u32], values: &[f64]) {
-        let length = values.len();
-        let mut fit = None;
+    /// Splits values into their words. What does not fit is added to the digits, and 0 stands in its place.
+    fn split(&mut self, quantity: usize, bins: &[u32], values: &[f64]) {
         if let Some(window) = self.windows[quantity] {
-            let Words { high, low } = &mut *self.words;
-            fit = Some(window::split_in(
-                values,
-                window,
-                &mut high[..length],
-                &mut low[..length],
-            ));
+            let Words { high, low } = &mut self.words[quantity];
+            let (high, low) = (&mut high[..values.len()], &mut low[..values.len()]);
+            let fit = window::split_in(values, window, high, low);
+            if !fit.misfit && !fit.remainder {
+                return;
+            }
         }
-        match fit {
-            Some(fit) if !fit.misfit && !fit.remainder => self.scatter(quantity, bins, length),
-            _ => self.add_otherwise(quantity, bins, values),
-        }
+        self.split_otherwise(quantity, bins, values);
     }
 
-    fn scatter(&mut self, quantity: usize, bins: &[u32], length: usize) {
-        let words = self.words.high[..length]
-            .iter()
-            .zip(&self.words.low[..length]);
-        for (&bin, (high, low)) in bins.iter().zip(words) {
-            let pending = &mut self.pending[bin as usize * self.quantities + quantity];
-            pending[0] += high;
-            pending[1] += low;
-        }
-    }
-
-    /// Adds what does not fit the present window: in another one, and what fits none value by value.
+    /// Splits what does not fit the present window: in another one, and what fits none value by value.
     #[cold]
-    fn add_otherwise(&mut self, quantity: usize, bins: &[u32], values: &[f64]) {
+    fn split_otherwise(&mut self, quantity: usize, bins: &[u32], values: &[f64]) {
+        let place = |bin: u32| bin as usize * self.quantities + quantity;
         let Some(window) = Window::holding(window::largest_magnitude(values)) else {
             for (&bin, &value) in bins.iter().zip(values) {
-                let place = bin as usize * self.quantities + quantity;
-                self.left_out += u64::from(!self.digits[place].add(value));
+                self.left_out += u64::from(!self.digits[place(bin)].add(value));
             }
+            self.words[quantity] = Words::new();
             return;
         };
         if self.windows[quantity] != Some(window) {
-            (0..self.since.len()).for_each(|bin| self.take_up_one(bin, quantity));
+            (0..self.counts.len()).for_each(|bin| self.take_up(bin));
             self.windows[quantity] = Some(window);
         }
-        let length = values.len();
-        let Words { high, low } = &mut *self.words;
-        let fit = window::split_in(values, window, &mut high[..length], &mut low[..length]);
-        self.scatter(quantity, bins, length);
-        if fit.remainder {
+        let Words { high, low } = &mut self.words[quantity];
+        let (high, low) = (&mut high[..values.len()], &mut low[..values.len()]);
+        if window::split_in(values, window, high, low).remainder {
             for (&bin, &value) in bins.iter().zip(values) {
                 let remainder = window::remainder(value, window);
                 if remainder != 0.0 {
@@ -142,22 +118,74 @@ impl Bins {
         }
     }
 
-    /// Moves what is pending of a bin to its digits.
-    fn take_up(&mut self, bin: usize) {
-        (0..self.quantities).for_each(|quantity| self.take_up_one(bin, quantity));
+    /// Adds the words to the bins; `WIDTH` numbers are pending in each.
+    fn scatter<const WIDTH: usize>(&mut self, bins: &[u32]) {
+        let mut start = 0;
+        while let Some(full) = self.scatter_some::<WIDTH>(bins, start) {
+            self.take_up(bins[full] as usize);
+            start = full;
+        }
     }
 
-    fn take_up_one(&mut self, bin: usize, quantity: usize) {
-        let place = bin * self.quantities + quantity;
-        let [high, low] = std::mem::take(&mut self.pending[place]);
-        if let Some(window) = self.windows[quantity] {
-            if high != 0 {
-                self.digits[place].add_integer(high, window.high);
+    /// As [`Bins::scatter`] from one contribution on, up to one for which there is no room left in its bin.
+    fn scatter_some<const WIDTH: usize>(&mut self, bins: &[u32], start: usize) -> Option<usize> {
+        let cells = self.pending.as_chunks_mut::<WIDTH>().0;
+        let (first, rest) = self.words.split_first()?;
+        for (index, &bin) in bins.iter().enumerate().skip(start) {
+            let at = index % CHUNK;
+            let cell = &mut cells[bin as usize];
+            if cell[0] >= ROOM as i64 {
+                return Some(index);
             }
-            if low != 0 {
-                self.digits[place].add_integer(low, window.low);
+            cell[0] += 1;
+            cell[1] += first.high[at];
+            cell[2] += first.low[at];
+            for (words, cell) in rest.iter().zip(cell[3..].as_chunks_mut::<2>().0) {
+                cell[0] += words.high[at];
+                cell[1] += words.low[at];
             }
         }
+        None
+    }
+
+    /// As [`Bins::scatter`] for any number of quantities.
+    fn scatter_any(&mut self, bins: &[u32]) {
+        let width = 1 + 2 * self.quantities;
+        for (index, &bin) in bins.iter().enumerate() {
+            let first = bin as usize * width;
+            if self.pending[first] >= ROOM as i64 {
+                self.take_up(bin as usize);
+            }
+            self.pending[first] += 1;
+            let cells = self.pending[first + 1..first + width]
+                .as_chunks_mut::<2>()
+                .0;
+            for (words, cell) in self.words.iter().zip(cells) {
+                cell[0] += words.high[index];
+                cell[1] += words.low[index];
+            }
+        }
+    }
+
+    /// Moves what is pending of a bin to its digits.
+    fn take_up(&mut self, bin: usize) {
+        let width = 1 + 2 * self.quantities;
+        let cell = &mut self.pending[bin * width..(bin + 1) * width];
+        self.counts[bin] += cell[0] as u64;
+        let words = cell[1..].as_chunks::<2>().0;
+        let digits = &mut self.digits[bin * self.quantities..(bin + 1) * self.quantities];
+        for ((&[high, low], window), digits) in words.iter().zip(&self.windows).zip(digits) {
+            if let Some(window) = window {
+                // A place that was never added to is left untouched, which saves clearing it.
+                if high != 0 {
+                    digits.add_integer(high, window.high);
+                }
+                if low != 0 {
+                    digits.add_integer(low, window.low);
+                }
+            }
+        }
+        cell.fill(0);
     }
 
     /// Takes up all that is pending, so that [`Bins::total`] and [`Bins::number`] tell of everything.
@@ -165,10 +193,7 @@ impl Bins {
         if !self.touched {
             return;
         }
-        for bin in 0..self.since.len() {
-            self.take_up(bin);
-            self.counts[bin] += u64::from(std::mem::take(&mut self.since[bin]));
-        }
+        (0..self.counts.len()).for_each(|bin| self.take_up(bin));
     }
 
     /// The exact sum of a quantity in a bin, as far as it has been settled.
@@ -204,8 +229,7 @@ impl Bins {
     /// Forgets everything but the size of the last values.
     pub fn clear(&mut self) {
         if self.touched {
-            self.pending.fill([0; 2]);
-            self.since.fill(0);
+            self.pending.fill(0);
             self.counts.fill(0);
             self.digits.iter_mut().for_each(Digits::clear);
             self.left_out = 0;
@@ -224,7 +248,7 @@ pub struct Rounded {
     /// For each bin the two words of each quantity's integer, low one first, then the count.
     cells: Vec<u64>,
     width: usize,
-    words: Box<Words>,
+    words: Words,
     left_out: u64,
     touched: bool,
 }
@@ -241,7 +265,7 @@ impl Rounded {
             windows: quanta.iter().map(|&quantum| Window::at(quantum)).collect(),
             cells: vec![0; bins * width],
             width,
-            words: Box::default(),
+            words: Words::new(),
             left_out: 0,
             touched: false,
         }
@@ -269,7 +293,7 @@ impl Rounded {
     fn add_chunk(&mut self, quantity: usize, bins: &[u32], values: &[f64]) {
         let length = values.len();
         let window = self.windows[quantity];
-        let Words { high, low } = &mut *self.words;
+        let Words { high, low } = &mut self.words;
         let fit = window::split_in(values, window, &mut high[..length], &mut low[..length]);
         if fit.misfit {
             for (index, value) in values.iter().enumerate() {
@@ -408,8 +432,14 @@ mod tests {
     #[test]
     fn rounded_sums_leave_out_what_is_too_large_or_not_finite() {
         let mut bins = Rounded::new(1, &[0]);
-        bins.add(&[0; 5], &[&[3.0, f64::NAN, f64::INFINITY, 2f64.powi(103), -2.0]]);
-        assert_eq!((Rounded::value(bins.cells(0, 0), 0), bins.left_out()), (1.0, 3));
+        bins.add(
+            &[0; 5],
+            &[&[3.0, f64::NAN, f64::INFINITY, 2f64.powi(103), -2.0]],
+        );
+        assert_eq!(
+            (Rounded::value(bins.cells(0, 0), 0), bins.left_out()),
+            (1.0, 3)
+        );
         assert_eq!(bins.number(0), 5);
     }
 }

@@ -428,12 +428,7 @@ fn fetch(address: usize) {
 }
 
 /// Numbers that follow each other without a gap, as a slice; none where they do not.
-fn packed<'a, T: Copy>(
-    base: usize,
-    stride: isize,
-    start: usize,
-    length: usize,
-) -> Option<&'a [T]> {
+fn packed<'a, T: Copy>(base: usize, stride: isize, start: usize, length: usize) -> Option<&'a [T]> {
     let size = size_of::<T>();
     if stride != size as isize || length == 0 {
         return None;

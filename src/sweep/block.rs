@@ -3,7 +3,7 @@
 use crate::lend::{Field, Scalar, Shape, View};
 
 /// Elements in a block: few enough that all fields of a block stay in a core's cache.
-pub const BLOCK: usize = 512;
+pub const BLOCK: usize = 128;
 
 /// Some of the fields.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
@@ -72,6 +72,13 @@ impl<'a> Block<'a> {
         }
         let start = (self.runs[field as usize] as usize + component) * BLOCK;
         &self.values[start..start + self.length]
+    }
+
+    /// One component of a field that is lent, as long as the longest block; beyond the elements its content means
+    /// nothing.
+    pub fn run(&self, field: Field, component: usize) -> &'a [f64; BLOCK] {
+        let run = self.runs[field as usize] as usize + component;
+        &self.values.as_chunks::<BLOCK>().0[run]
     }
 
     /// The numbers of a field with one component.

@@ -156,9 +156,7 @@ impl Sweep {
 
     /// Calls `visit` for the worker of every thread.
     pub fn each_worker(&mut self, mut visit: impl FnMut(&mut Worker)) {
-        self.workers
-            .iter_mut()
-            .for_each(|cell| visit(worker(cell)));
+        self.workers.iter_mut().for_each(|cell| visit(worker(cell)));
     }
 
     /// The sample of the calling thread, for what is not measured from arrays.

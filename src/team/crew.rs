@@ -60,8 +60,9 @@ impl Crew {
         };
         for number in 1..size {
             let shared = crew.shared.clone();
-            crew.threads
-                .push(thread::spawn("limno sweep", move || serve(&shared, number))?);
+            crew.threads.push(thread::spawn("limno sweep", move || {
+                serve(&shared, number)
+            })?);
         }
         Ok(crew)
     }

@@ -94,14 +94,25 @@ pub(super) fn of_all_stations() -> Vec<Column> {
         .collect();
     for (name, description) in [
         ("stations", "stations that the row tells of"),
-        ("elements", "gas elements in the shell, of all stations together"),
+        (
+            "elements",
+            "gas elements in the shell, of all stations together",
+        ),
     ] {
         let unsigned = ValueType::Unsigned;
         columns.push(column(name, "", Kind::Instant, unsigned, description));
     }
     for (name, unit, what) in [
-        ("mass_outflow_rate", "solMass.yr**-1", "mass of gas that moves outward through the shell per time"),
-        ("mass_inflow_rate", "solMass.yr**-1", "mass of gas that moves inward through the shell per time"),
+        (
+            "mass_outflow_rate",
+            "solMass.yr**-1",
+            "mass of gas that moves outward through the shell per time",
+        ),
+        (
+            "mass_inflow_rate",
+            "solMass.yr**-1",
+            "mass of gas that moves inward through the shell per time",
+        ),
         ("gas_mass", "solMass", "mass of gas in the shell"),
     ] {
         for percentile in super::summary::PERCENTILES {

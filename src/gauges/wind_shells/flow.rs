@@ -3,6 +3,7 @@
 //! Plain loops over runs of doubles, compiled for several vector widths and chosen at run time. Every result comes
 //! from one element alone by the operations written here, so the width changes nothing but the speed.
 
+use crate::sweep::BLOCK;
 use multiversion::multiversion;
 
 /// Adding and subtracting 1.5·2^52 rounds to the nearest whole number, ties to even.
@@ -73,17 +74,27 @@ pub(super) fn wrap(periods: &Periods, runs: [&mut [f64]; 3], squares: &mut [f64]
     }
 }
 
-/// Writes down which squares lie from `low` to `high`; returns how many. `into` is as long as `squares` at least.
-pub(super) fn select(squares: &[f64], low: f64, high: f64, into: &mut [u32]) -> usize {
-    let mut count = 0;
-    // Without a branch: which elements lie within is not to be guessed.
-    for (index, &square) in squares.iter().enumerate() {
-        if let Some(place) = into.get_mut(count) {
-            *place = index as u32;
+/// Elements that one word of marks tells of.
+pub(super) const MARKS: usize = 64;
+
+/// Marks which squares lie from `low` to `high`, a bit each.
+#[multiversion(targets(
+    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
+    "x86_64+avx+avx2",
+    "aarch64+neon"
+))]
+pub(super) fn mark(squares: &[f64; BLOCK], low: f64, high: f64, marks: &mut [u64; BLOCK / MARKS]) {
+    const BITS: usize = 8;
+    for (word, squares) in marks.iter_mut().zip(squares.as_chunks::<MARKS>().0) {
+        *word = 0;
+        for (place, squares) in squares.as_chunks::<BITS>().0.iter().enumerate() {
+            let mut bits = 0u8;
+            for (bit, &square) in squares.iter().enumerate() {
+                bits |= u8::from((square >= low) & (square <= high)) << bit;
+            }
+            *word |= u64::from(bits) << (BITS * place);
         }
-        count += usize::from((square >= low) & (square <= high));
     }
-    count
 }
 
 /// Distances from their squares, and what is carried outward: mass times radial velocity, relative to a shell that
@@ -123,7 +134,7 @@ const EDGES: usize = 8;
 /// Up to so many edges all are compared; beyond it a search takes fewer steps.
 const FEW: usize = 32;
 
-/// For each radius the number of edges, which rise, that are not beyond it.
+/// For each radius the number of the edges, which rise, that are not beyond it.
 pub(super) fn count_edges(radii: &[f64], edges: &[f64], into: &mut [u32]) {
     if edges.len() > FEW {
         for (radius, count) in radii.iter().zip(into) {
@@ -150,4 +161,27 @@ fn add_edges(radii: &[f64], edges: &[f64; EDGES], into: &mut [u32]) {
             *count += u32::from(edge <= radius);
         }
     }
+}
+
+/// Turns the numbers of shells into those of bins: two a shell, the second for what moves inward. `firsts` are the
+/// first bins of the stations. Returns whether all radii lie from `low` on and below `high`.
+#[multiversion(targets(
+    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
+    "x86_64+avx+avx2",
+    "aarch64+neon"
+))]
+pub(super) fn find_bins(
+    radii: &[f64],
+    fluxes: &[f64],
+    firsts: &[u32],
+    (low, high): (f64, f64),
+    shells_to_bins: &mut [u32],
+) -> bool {
+    let mut outside = 0;
+    let contributions = radii.iter().zip(fluxes).zip(firsts);
+    for (((&radius, &flux), first), bin) in contributions.zip(shells_to_bins) {
+        *bin = first + 2 * *bin + u32::from(flux < 0.0);
+        outside |= u64::from((radius < low) | (radius >= high));
+    }
+    outside == 0
 }

@@ -162,8 +162,7 @@ impl WindShells {
         let scale = physical / moment.factors.position;
         let periods = self.periods(moment);
         let shortest = periods.into_iter().flatten().reduce(f64::min);
-        let fits =
-            |edge: f64| shortest.is_none_or(|period| 2.0 * edge <= period * (1.0 + 1e-12));
+        let fits = |edge: f64| shortest.is_none_or(|period| 2.0 * edge <= period * (1.0 + 1e-12));
         let shells = &mut self.shells;
         shells.periods = Periods::new(periods);
         shells.hubble = hubble;
@@ -176,61 +175,78 @@ impl WindShells {
             shells.edges.last().copied().unwrap_or(0.0),
         );
         const MARGIN: f64 = 1e-14;
-        shells.squares = (
-            first * first * (1.0 - MARGIN),
-            last * last * (1.0 + MARGIN),
-        );
+        shells.squares = (first * first * (1.0 - MARGIN), last * last * (1.0 + MARGIN));
     }
 
     /// Measures elements and stations that may be near each other: `pairs` of them stand in the first two runs of
-    /// indices, their distances in the first three runs of numbers, with the squares in the fourth.
+    /// indices (the element, the station), their distances in the first three runs of numbers, with the squares in
+    /// the fourth.
     fn measure_pairs(&self, block: &Block, pairs: usize, work: &mut Work, sample: &mut Sample) {
         let shells = &self.shells;
-        let [elements, owners, selected] = &mut *work.indices;
+        let all = self.edges.len() as u32 - 1;
+        let [elements, owners, bins] = &mut *work.indices;
         let [dx, dy, dz, squares, vx, vy, vz, masses, fluxes, ..] = &mut *work.runs;
+        let from_velocity = [0, 1, 2].map(|axis| block.run(Field::Velocity, axis));
+        let from_mass = block.run(Field::Mass, 0);
         let (low, high) = shells.squares;
-        let count = flow::select(&squares[..pairs], low, high, selected);
+        let mut marks = [0; BLOCK / flow::MARKS];
+        squares[pairs..].fill(f64::INFINITY);
+        flow::mark(squares, low, high, &mut marks);
+        let mut count = 0;
+        for (word, mut marks) in marks.into_iter().enumerate() {
+            while marks != 0 {
+                // The masks change nothing; they let the compiler leave out checks.
+                let from = (word * flow::MARKS + marks.trailing_zeros() as usize) % BLOCK;
+                let to = count % BLOCK;
+                marks &= marks - 1;
+                // Never after the place it comes from, so what is still to be moved is not overwritten.
+                (dx[to], dy[to], dz[to], squares[to]) =
+                    (dx[from], dy[from], dz[from], squares[from]);
+                let (element, owner) = (elements[from] as usize % BLOCK, owners[from]);
+                let velocity = &self.stations[owner as usize].velocity;
+                vx[to] = from_velocity[0][element] - velocity[0];
+                vy[to] = from_velocity[1][element] - velocity[1];
+                vz[to] = from_velocity[2][element] - velocity[2];
+                masses[to] = from_mass[element];
+                owners[to] = owner * all * DIRECTIONS as u32;
+                count += 1;
+            }
+        }
         if count == 0 {
             return;
         }
-        let [from_x, from_y, from_z] = block.vector(Field::Velocity);
-        let from_mass = block.scalar(Field::Mass);
-        for (to, &from) in selected[..count].iter().enumerate() {
-            // Never after the place it comes from, so what is still to be moved is not overwritten.
-            let from = from as usize;
-            (dx[to], dy[to], dz[to], squares[to]) = (dx[from], dy[from], dz[from], squares[from]);
-            let (element, owner) = (elements[from] as usize, owners[from]);
-            owners[to] = owner;
-            let velocity = &self.stations[owner as usize].velocity;
-            vx[to] = from_x[element] - velocity[0];
-            vy[to] = from_y[element] - velocity[1];
-            vz[to] = from_z[element] - velocity[2];
-            masses[to] = from_mass[element];
-        }
+        let radii = &mut squares[..count];
         flow::carry(
             [&dx[..count], &dy[..count], &dz[..count]],
             [&vx[..count], &vy[..count], &vz[..count]],
             &masses[..count],
             shells.hubble,
-            &mut squares[..count],
+            radii,
             &mut fluxes[..count],
         );
-        flow::count_edges(&squares[..count], &shells.edges, selected);
-        // The margins let some in that lie just outside.
-        let all = self.edges.len() - 1;
-        let mut kept = 0;
-        for from in 0..count {
-            let shell = (selected[from] as usize).wrapping_sub(1);
-            (masses[kept], fluxes[kept]) = (masses[from], fluxes[from]);
-            let direction = if fluxes[from] >= 0.0 { OUTWARD } else { INWARD };
-            selected[kept] =
-                ((owners[from] as usize * all + shell) * DIRECTIONS + direction) as u32;
-            kept += usize::from(shell < shells.fitting());
+        let fitting = shells.fitting();
+        let ends = (shells.edges[0], shells.edges[fitting]);
+        flow::count_edges(radii, &shells.edges[1..fitting], bins);
+        let are_within = flow::find_bins(
+            radii,
+            &fluxes[..count],
+            &owners[..count],
+            ends,
+            &mut bins[..count],
+        );
+        if !are_within {
+            // The margins have let some in that lie just outside.
+            let mut kept = 0;
+            for from in 0..count {
+                (masses[kept], fluxes[kept], bins[kept]) = (masses[from], fluxes[from], bins[from]);
+                kept += usize::from(ends.0 <= squares[from] && squares[from] < ends.1);
+            }
+            count = kept;
         }
         sample.scatter(
             self.sums,
-            &selected[..kept],
-            &[&fluxes[..kept], &masses[..kept]],
+            &bins[..count],
+            &[&fluxes[..count], &masses[..count]],
         );
     }
 
@@ -277,7 +293,13 @@ impl WindShells {
         self.measure_candidates(block, pairs, work, sample);
     }
 
-    fn measure_candidates(&self, block: &Block, pairs: usize, work: &mut Work, sample: &mut Sample) {
+    fn measure_candidates(
+        &self,
+        block: &Block,
+        pairs: usize,
+        work: &mut Work,
+        sample: &mut Sample,
+    ) {
         let [dx, dy, dz, squares, ..] = &mut *work.runs;
         flow::wrap(
             &self.shells.periods,
@@ -401,8 +423,7 @@ impl Gauge for WindShells {
         if let Some(&reach) = self.shells.edges.last()
             && self.stations.len() > FEW
         {
-            self.grid
-                .renew(&self.stations, self.shells.periods, reach);
+            self.grid.renew(&self.stations, self.shells.periods, reach);
         }
     }
 

@@ -1,7 +1,7 @@
 //! What the config says of stations and shells.
 
-use super::stations::Station;
 use super::Frame;
+use super::stations::Station;
 use crate::config::{Config, Quantity, Section};
 use crate::units::Dimension;
 
@@ -10,7 +10,10 @@ pub(super) fn stations(section: &mut Section) -> Vec<Station> {
     let sections = match (section.has("station"), section.has("stations")) {
         (false, true) => section.sections("stations").or(Vec::new()),
         (true, true) => {
-            section.refuse("stations", "expected either one `station` or a list of `stations`");
+            section.refuse(
+                "stations",
+                "expected either one `station` or a list of `stations`",
+            );
             let _ = section.section("station").optional();
             section.sections("stations").or(Vec::new())
         }
@@ -42,7 +45,10 @@ pub(super) fn stations(section: &mut Section) -> Vec<Station> {
     let mut names: Vec<&str> = stations.iter().map(|station| &*station.name).collect();
     names.sort_unstable();
     if let Some(pair) = names.windows(2).find(|pair| pair[0] == pair[1]) {
-        let text = format!("found two stations named `{}`; expected a name for each", pair[0]);
+        let text = format!(
+            "found two stations named `{}`; expected a name for each",
+            pair[0]
+        );
         section.refuse("stations", text);
     }
     stations
@@ -139,7 +145,12 @@ fn spaced_edges(from: f64, to: f64, count: usize, logarithmic: bool) -> Vec<f64>
 }
 
 /// A shell that reaches beyond half the box would meet its own periodic image.
-pub(super) fn check_against_box(section: &mut Section, config: &Config, frame: Frame, edges: &[f64]) {
+pub(super) fn check_against_box(
+    section: &mut Section,
+    config: &Config,
+    frame: Frame,
+    edges: &[f64],
+) {
     let Some(&largest) = edges.last() else { return };
     let expanding = config.expansion.cosmology().is_some();
     if expanding && frame == Frame::Physical {
