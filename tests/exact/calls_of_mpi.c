@@ -263,7 +263,7 @@ static void test(void)
     }
     close_counted(run);
     CHECK(waits > 0 || check_ranks == 1, "no third reduction was about to start with two in flight");
-    CHECK(measured >= 30 && unmeasured >= 50, "only %d measured and %d other steps", measured, unmeasured);
+    CHECK(measured >= 30 && unmeasured >= 40, "only %d measured and %d other steps", measured, unmeasured);
 
     unsigned long starts = 0, locals = 0;
     for (size_t i = 0; i < KNOWN; i++) {
