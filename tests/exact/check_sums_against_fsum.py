@@ -31,6 +31,7 @@ from lists import all_lists, double_double_sum
 
 # The nominal solar mass parameter (IAU 2015 resolution B3) over CODATA 2022 G, in g.
 SOLAR_MASS = 1.3271244e26 / 6.6743e-8
+SPECIES = ("gas", "star", "dark_matter", "wind", "black_hole")
 YEAR = 365.25 * 86400.0
 SCALE = 2**1074
 
@@ -131,63 +132,66 @@ def finite(values):
     return [value for value in values if math.isfinite(value)]
 
 
-def through_a_host(host, limnograph, folder, threads, holes, sums):
-    """Lends every list in a step of its own, and checks the rows."""
-    path, series, table = f"{folder}/lists_{threads}", f"{folder}/threads_{threads}.limno", f"{folder}/rows_{threads}.csv"
-    with open(path, "wb") as out:
+def expected_row(hole, total, first):
+    """What stands in the row of a list: cells that are doubles, cells that are texts, and what the host is told."""
+    right = rounded(total)
+    numbers = {f"mass_{species}": right for species in SPECIES}
+    numbers["baryon_mass"] = rounded(4 * total)
+    numbers["baryon_mass_drift"] = rounded(4 * total - first) / rounded(first)
+    # What is not finite is left out of everything that needs it, and counted.
+    bad = len(hole.masses) - len(finite(hole.masses))
+    bad_rates = len(hole.rates) - len(finite(hole.rates))
+    texts = {f"not_finite_{species}_mass": str(bad) for species in SPECIES}
+    texts["not_finite_black_hole_accretion_rate"] = str(bad_rates)
+    told = [f"{bad} of {species} mass" for species in SPECIES if bad]
+    told += [f"{bad_rates} of black_hole accretion_rate"] * (bad_rates > 0)
+    # Counts, and the largest one of several.
+    whole = hole.whole()
+    texts["black_holes"] = str(len(whole))
+    if whole:
+        mass, _, identity = max(whole, key=lambda item: (item[0], math.copysign(1.0, item[0]), item[2]))
+        numbers["black_hole_largest_mass"] = mass * SOLAR_MASS / SOLAR_MASS
+        texts["black_hole_largest_id"] = str(identity)
+    else:
+        texts["black_hole_largest_mass"] = texts["black_hole_largest_id"] = ""
+    if hole.masses:
+        rates = rounded(exact_sum(rate for _, rate, _ in whole))
+        numbers["black_hole_accretion_rate"] = rates * YEAR / SOLAR_MASS
+        numbers["black_hole_mass"] = rounded(exact_sum(mass for mass, _, _ in whole)) * SOLAR_MASS / SOLAR_MASS
+    return numbers, texts, told
+
+
+def through_a_host(host, limnograph, folder, threads, vectors, holes, expected):
+    """Lends every list in a step of its own, and checks the rows; False where the machine cannot hide its vectors."""
+    name = f"{folder}/threads_{threads}_vectors_{vectors}"
+    with open(f"{folder}/lists", "wb") as out:
         for hole in holes:
             count = len(hole.masses)
-            out.write(struct.pack(f"={1}Q{2 * count}d{count}Q", count, *hole.masses, *hole.rates, *hole.ids))
-    run = subprocess.run([host, path, series, str(threads)], capture_output=True, text=True)
+            out.write(struct.pack(f"=Q{2 * count}d{count}Q", count, *hole.masses, *hole.rates, *hole.ids))
+    command = [host, f"{folder}/lists", f"{name}.limno", str(threads), vectors]
+    run = subprocess.run(command, capture_output=True, text=True)
+    if run.returncode == 77 and vectors != "native":
+        return False
     if run.returncode != 0:
         raise SystemExit(f"the host ended with status {run.returncode}: {run.stderr}")
-    *told, floats = run.stdout.splitlines()
+    *answers, floats = run.stdout.splitlines()
     require(int(floats.split()[0]) >= 15, f"too few lists of floats: {floats}")
-    require(len(told) == len(holes), f"{len(holes)} steps, {len(told)} answers")
-    subprocess.run([limnograph, "export", series, "--to", "csv", "-o", table], check=True)
-    with open(table, newline="") as lines:
+    require(len(answers) == len(holes), f"{len(holes)} steps, {len(answers)} answers")
+    subprocess.run([limnograph, "export", f"{name}.limno", "--to", "csv", "-o", f"{name}.csv"], check=True)
+    with open(f"{name}.csv", newline="") as lines:
         rows = list(csv.reader(line for line in lines if not line.startswith("#")))
-    names = [name.split(" [")[0] for name in rows[0]]
+    names = [column.split(" [")[0] for column in rows[0]]
     rows = [dict(zip(names, row)) for row in rows[1:]]
     require([int(row["step"]) for row in rows] == list(range(1, len(holes) + 1)), f"expected a row a step, found {len(rows)}")
-    first = 4 * sums[0]
-    for row, hole, total, answer in zip(rows, holes, sums, told):
-        # Sums of masses: five ways to lie in memory, and four of them together.
-        right = rounded(total)
-        for species in ("gas", "star", "dark_matter", "wind", "black_hole"):
-            check(f"mass_{species}", float(row[f"mass_{species}"]), right)
-        check("baryon_mass", float(row["baryon_mass"]), rounded(4 * total))
-        check("baryon_mass_drift", float(row["baryon_mass_drift"]), rounded(4 * total - first) / rounded(first))
-        # What is not finite is left out of everything that needs it, and counted.
-        bad = len(hole.masses) - len(finite(hole.masses))
-        for species in ("gas", "star", "dark_matter", "wind", "black_hole"):
-            check("not_finite_…_mass", int(row[f"not_finite_{species}_mass"]), bad)
-        bad_rates = len(hole.rates) - len(finite(hole.rates))
-        check("not_finite_black_hole_accretion_rate", int(row["not_finite_black_hole_accretion_rate"]), bad_rates)
-        parts = [f"{bad} of {species} mass" for species in ("gas", "star", "dark_matter", "wind", "black_hole") if bad]
-        parts += [f"{bad_rates} of black_hole accretion_rate"] * (bad_rates > 0)
-        status = "LIMNO_LEFT_OUT" if parts else "LIMNO_OK"
-        check("status", answer.split()[0], status)
-        for part in parts:
-            check("text", part in answer, True)
-        # Counts, sums and the largest of several fields.
-        whole = hole.whole()
-        if not hole.masses:
-            # A count of 0 is lent: there are none, and no largest one.
-            check("black_holes", row["black_holes"], "0")
-            check("no largest", row["black_hole_largest_mass"] + row["black_hole_largest_id"], "")
-            continue
-        check("black_holes", int(row["black_holes"]), len(whole))
-        rates = rounded(exact_sum(rate for _, rate, _ in whole))
-        check("black_hole_accretion_rate", float(row["black_hole_accretion_rate"]), rates * YEAR / SOLAR_MASS)
-        masses = rounded(exact_sum(mass for mass, _, _ in whole))
-        check("black_hole_mass", float(row["black_hole_mass"]), masses * SOLAR_MASS / SOLAR_MASS)
-        if whole:
-            mass, _, identity = max(whole, key=lambda item: (item[0], math.copysign(1.0, item[0]), item[2]))
-            check("black_hole_largest_mass", float(row["black_hole_largest_mass"]), mass * SOLAR_MASS / SOLAR_MASS)
-            check("black_hole_largest_id", int(row["black_hole_largest_id"]), identity)
-        else:
-            check("no largest", row["black_hole_largest_mass"] + row["black_hole_largest_id"], "")
+    for row, answer, (numbers, texts, told) in zip(rows, answers, expected):
+        for column, right in numbers.items():
+            check(column, float(row[column] or "nan"), right)
+        for column, right in texts.items():
+            check(column, row[column], right)
+        check("status", answer.split()[0], "LIMNO_LEFT_OUT" if told else "LIMNO_OK")
+        for part in told:
+            check("text of an error", part if part in answer else answer, part)
+    return True
 
 
 def main():
@@ -218,8 +222,10 @@ def main():
     more = list(with_bad_numbers(rng, lists)) + list(equal_masses(rng))
     holes = [Holes(rng, values) for values in lists + more]
     sums += [exact_sum(finite(values)) for values in more]
-    for threads in (1, 3):
-        through_a_host(lend_lists, limnograph, folder, threads, holes, sums)
+    rows = [expected_row(hole, total, 4 * sums[0]) for hole, total in zip(holes, sums)]
+    for threads, vectors in ((1, "native"), (3, "native"), (1, "128"), (4, "256")):
+        if not through_a_host(lend_lists, limnograph, folder, threads, vectors, holes, rows):
+            print(f"this machine cannot hide vectors wider than {vectors} bits: not tried with narrower ones")
 
     print(f"{len(lists)} lists of {sum(map(len, lists))} doubles: " + ", ".join(f"{n} {k}" for k, n in kinds.items()))
     print(f"math.fsum raised on {raised}, {infinite} sums are infinite, plain addition is wrong on {plain_wrong}")

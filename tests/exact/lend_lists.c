@@ -1,8 +1,9 @@
 /*
  * A host that lends lists of masses, one list a step, as five species that lie differently in memory:
  *
- *     lend_lists LISTS SERIES THREADS >TOLD
+ *     lend_lists LISTS SERIES THREADS native|128|256 >TOLD
  *
+ * The last word is the widest vector, in bits, that the library may find.
  * LISTS holds for each step, in the machine's own bytes, a 64-bit count, so many masses (double), accretion rates
  * (double) and identities (uint64_t). The same masses are lent as
  *     gas          a list of doubles, or of floats where every mass is one
@@ -19,6 +20,7 @@
 #include <string.h>
 
 #include "limnograph.h"
+#include "narrow_processor.h"
 
 /* A mass of 1 is 1 Msun, the unit of the columns of masses; an accretion rate of 1 is 1 g/s. */
 static const char config[] =
@@ -84,7 +86,9 @@ static int32_t lend_gas(limno_run *run, const double *mass, size_t count, float 
 
 int main(int argc, char **argv)
 {
-    need(argc == 4, "usage: lend_lists LISTS SERIES THREADS >TOLD");
+    need(argc == 5, "usage: lend_lists LISTS SERIES THREADS native|128|256 >TOLD");
+    const int hides = strcmp(argv[4], "native") != 0;
+    if (hides && !hide_wide_vectors(atoi(argv[4]))) return 77;
     FILE *lists = fopen(argv[1], "rb");
     need(lists != NULL, "the lists cannot be read");
     limno_options options = LIMNO_OPTIONS_INIT;
@@ -129,6 +133,7 @@ int main(int argc, char **argv)
         free(mass), free(rate), free(scratch), free(id), free(backwards), free(star), free(narrow);
     }
     good(run, limno_close(run));
+    need(!hides || cpuid_answers > 0, "nothing asked what the processor can do, so nothing was hidden");
     printf("%llu lists were lent as floats\n", (unsigned long long)as_floats);
     return 0;
 }
