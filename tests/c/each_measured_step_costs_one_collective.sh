@@ -10,7 +10,11 @@ read -r -a compiler <<<"${MPICC:-mpicc}"
 
 # All functions of MPI, in either spelling, that the library does not define itself.
 nm -D --undefined-only "$library" | awk '$NF ~ /^P?MPI_/ { sub(/@.*/, "", $NF); print $NF }' | sort -u >"$place/called"
-[ "$(wc -l <"$place/called")" -ge 10 ] || { echo "the library seems to call hardly any MPI:"; cat "$place/called"; exit 1; }
+if [ "$(wc -l <"$place/called")" -lt 10 ]; then
+    echo "the library seems to call hardly any MPI:"
+    cat "$place/called"
+    exit 1
+fi
 if grep ^PMPI_ "$place/called"; then
     echo "these calls of the library cannot be intercepted"
     exit 1
@@ -26,7 +30,9 @@ echo '#include <mpi.h>' >"$place/declares.c"
         if (!match($0, /[^A-Za-z_0-9]MPI_[A-Za-z_0-9]+ *\(/)) next
         name = substr($0, RSTART + 1, RLENGTH - 2); gsub(/ /, "", name)
         if (!(name in missing)) next
-        result = substr($0, 1, RSTART); sub(/^.*extern /, "", result); gsub(/__attribute__ *\(\([^()]*(\([^()]*\))?[^()]*\)\)/, "", result)
+        result = substr($0, 1, RSTART)
+        sub(/^.*extern /, "", result)
+        gsub(/__attribute__ *\(\([^()]*(\([^()]*\))?[^()]*\)\)/, "", result)
         list = substr($0, RSTART + RLENGTH); sub(/\).*/, "", list)
         arguments = ""
         number = split(list, parameter, ",")

@@ -222,7 +222,7 @@ static void run_ahead(limno_run *run, uint64_t from, int ahead)
     if (check_rank != ahead) wait_for_file(path);
     for (uint64_t step = from; step < from + 2 * EVERY; step++) one_step(run, step, 0, 0, 0);
     if (check_rank == ahead) {
-        if (check_ranks > 1) CHECK(in_flight == 2, "%d reductions are in flight of a rank ahead of all others", in_flight);
+        if (check_ranks > 1) CHECK(in_flight == 2, "%d reductions are in flight of a rank ahead of all", in_flight);
         FILE *file = fopen(path, "w");
         CHECK(file && fclose(file) == 0, "%s cannot be written", path);
     }
@@ -272,7 +272,8 @@ static void test(void)
     }
     starts -= at_opening;
     /* Closed twice. */
-    CHECK(starts >= (unsigned long)measured && starts <= (unsigned long)measured + 2, "%lu reductions for %d rows", starts, measured);
+    CHECK(starts >= (unsigned long)measured && starts <= (unsigned long)measured + 2, "%lu reductions for %d rows", starts,
+          measured);
     PMPI_Barrier(MPI_COMM_WORLD);
     if (check_rank == 0) {
         struct sheet *rows = read_back(series_path("counted"), "run");

@@ -182,7 +182,8 @@ def through_a_host(host, limnograph, folder, threads, vectors, holes, expected):
         rows = list(csv.reader(line for line in lines if not line.startswith("#")))
     names = [column.split(" [")[0] for column in rows[0]]
     rows = [dict(zip(names, row)) for row in rows[1:]]
-    require([int(row["step"]) for row in rows] == list(range(1, len(holes) + 1)), f"expected a row a step, found {len(rows)}")
+    steps = [int(row["step"]) for row in rows]
+    require(steps == list(range(1, len(holes) + 1)), f"expected a row a step, found {len(rows)}")
     for row, answer, (numbers, texts, told) in zip(rows, answers, expected):
         for column, right in numbers.items():
             check(column, float(row[column] or "nan"), right)
@@ -213,7 +214,8 @@ def main():
             require(abs(expected) < 1e-300, f"{values[:5]} are not small")
     sums = [exact_sum(values) for values in lists]
     expected = [rounded(total) for total in sums]
-    plain_wrong = sum(bits(functools.reduce(operator.add, values, 0.0)) != bits(right) for values, right in zip(lists, expected))
+    plain = [functools.reduce(operator.add, values, 0.0) for values in lists]
+    plain_wrong = sum(bits(found) != bits(right) for found, right in zip(plain, expected))
     require(len(kinds) == 14 and min(kinds.values()) >= 15, f"kinds of lists are missing: {kinds}")
     require(raised >= 10 and infinite >= 5, f"fsum raised on {raised} lists, {infinite} sums are infinite")
     require(min(map(len, lists)) == 0 and max(map(len, lists)) > 5000, "the lengths are not 0 to beyond 5000")

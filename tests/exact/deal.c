@@ -5,7 +5,8 @@
  *     deal SERIES EXPECTED THREADS structs|arrays f32|f64 turn|blocks|halves|odd SEED native|128|256|mixed
  *
  * THREADS are the library's; SEED is that of the order (0: as they are made); the last word is the widest vector, in
- * bits, that the library may find (mixed: 128 on every other rank). EXPECTED is a file for how many numbers are not finite, by column.
+ * bits, that the library may find (mixed: 128 on every other rank). EXPECTED is a file for how many numbers are
+ * not finite, by column.
  *
  * Every number is a small integer times a power of two that float and double both hold, and made by integers alone, so
  * that hosts built in any way make the same. Built with -DALONE it needs no MPI; with -DTRAPS floating-point exceptions
@@ -133,14 +134,18 @@ static void make_particles(int step)
             int64_t place = (int64_t)(word >> 41);
             if (i % 2) place = ((int64_t)station[k] << 13) + (int64_t)(word >> 43) - (1 << 20);
             if (i % 97 == 1) place = (int64_t)station[k] << 13;                  /* where the station is */
-            if (i % 97 == 3) place = (int64_t)(station[k] + (k == (int)(i % 3)) * 2 * (8 + 8 * (int)(i % 9))) << 13; /* on an edge, where a is ½ */
+            if (i % 97 == 3) { /* on an edge, where a is ½ */
+                int off = k == (int)(i % 3) ? 2 * (8 + 8 * (int)(i % 9)) : 0;
+                place = (int64_t)(station[k] + off) << 13;
+            }
             place &= ((int64_t)EDGE << 13) - 1;
             gas[i][GAS_X + k] = number_of(bits_of(place, -13));
             gas[i][GAS_VX + k] = number_of(bits_of((int64_t)(draw(2, step, i, k) >> 44) - (1 << 19), -10));
         }
-        /* Masses over 60 orders of magnitude of two each way, some of them zero. */
+        /* Some masses are 2^60 times smaller or larger than others, some zero. */
         uint64_t word = draw(3, step, i, 0);
-        gas[i][GAS_MASS] = number_of(i % 211 == 5 ? 0 : bits_of((int64_t)(1 + (word >> 41)), -22 + (i % 13 ? (int)(word % 7) : (int)(word % 121) - 60)));
+        int power = i % 13 ? (int)(word % 7) : (int)(word % 121) - 60;
+        gas[i][GAS_MASS] = number_of(i % 211 == 5 ? 0 : bits_of((int64_t)(1 + (word >> 41)), power - 22));
         gas[i][GAS_RATE] = number_of(i % 3 ? 0 : bits_of((int64_t)(draw(4, step, i, 0) >> 41), -26));
     }
     for (uint64_t i = 0; i < STARS; i++) {
@@ -153,12 +158,15 @@ static void make_particles(int step)
     for (uint64_t i = 0; i < HOLES; i++) {
         hole[i][HOLE_MASS] = number_of(bits_of((int64_t)(1 + (draw(6, step, i, 0) >> 41)), -18));
         /* Several share the largest mass. */
-        hole[i][HOLE_SUBGRID] = number_of(bits_of(1 + (int64_t)(i % 31 == 7 ? 1 << 20 : draw(6, step, i, 1) % (1 << 20)), -14));
+        uint64_t subgrid = i % 31 == 7 ? 1 << 20 : draw(6, step, i, 1) % (1 << 20);
+        hole[i][HOLE_SUBGRID] = number_of(bits_of((int64_t)(1 + subgrid), -14));
         hole[i][HOLE_RATE] = number_of(bits_of((int64_t)(draw(6, step, i, 2) >> 42), -27));
         hole_id[i] = draw(7, 0, i, 0) >> 33;
     }
-    for (uint64_t i = 0; i < DARK; i++)
-        dark[i][0] = number_of(bits_of((int64_t)(draw(8, step, i, 0) >> 40) - (1 << 23), (int)(draw(8, step, i, 1) % 181) - 120));
+    for (uint64_t i = 0; i < DARK; i++) {
+        int64_t integer = (int64_t)(draw(8, step, i, 0) >> 40) - (1 << 23);
+        dark[i][0] = number_of(bits_of(integer, (int)(draw(8, step, i, 1) % 181) - 120));
+    }
     /* A few numbers that are none, in different fields and blocks, some in the same element. */
     static const int places[7] = {0, 77, 1024, 2047, 4500, 6800, 7000};
     for (int i = 0; i < 7; i++) {
@@ -167,7 +175,8 @@ static void make_particles(int step)
         gas[places[i] / 2 + 9][i % 3] = number_of(bad_bits[(i + 1) % 4]);
         star[places[i] / 8 + 1][i % STAR_FIELDS] = number_of(bad_bits[i % 4]);
     }
-    hole[3][HOLE_MASS] = hole[40][HOLE_SUBGRID] = hole[7][HOLE_RATE] = hole[HOLES - 1][HOLE_RATE] = number_of(bad_bits[step % 4]);
+    hole[3][HOLE_MASS] = hole[40][HOLE_SUBGRID] = hole[7][HOLE_RATE] = number_of(bad_bits[step % 4]);
+    hole[HOLES - 1][HOLE_RATE] = number_of(bad_bits[3]);
 }
 
 /* ---- what is told of them ----------------------------------------------------------------------------------- */
@@ -194,7 +203,8 @@ static void count_bad(const char *species, double (*all)[FIELDS], const size_t *
         bad_here[f] = 0;
         for (size_t i = 0; i < count; i++) {
             int bad = 0;
-            for (int k = 0; k < checked[f].components; k++) bad |= is_bad(all[which ? which[i] : i][checked[f].first + k]);
+            const double *element = all[which ? which[i] : i] + checked[f].first;
+            for (int k = 0; k < checked[f].components; k++) bad |= is_bad(element[k]);
             bad_here[f] += (size_t)bad;
         }
     }
@@ -202,12 +212,13 @@ static void count_bad(const char *species, double (*all)[FIELDS], const size_t *
 
 static void check_text(limno_run *run, limno_status status)
 {
+    const char *text = limno_last_error(run);
     size_t total = 0;
     for (size_t f = 0; f < CHECKED; f++) {
         char part[100];
         total += bad_here[f];
         snprintf(part, sizeof part, "%zu of %s %s", bad_here[f], checked[f].species, checked[f].name);
-        if (bad_here[f] > 0 && !strstr(limno_last_error(run), part)) FAIL("the text lacks \"%s\": %s", part, limno_last_error(run));
+        if (bad_here[f] > 0 && !strstr(text, part)) FAIL("the text lacks \"%s\": %s", part, text);
     }
     if (status != (total > 0 ? LIMNO_LEFT_OUT : LIMNO_OK))
         FAIL("%zu numbers are not finite, and limno_enter answers %s", total, limno_status_name(status));
@@ -274,17 +285,18 @@ static void lend(limno_run *run, int slot, const struct field *field, size_t cou
     const char *start = has_floats ? (const char *)memory[slot].f : (const char *)memory[slot].d;
     const ptrdiff_t stride = (ptrdiff_t)(bytes * (has_structs ? fields : 1));
     const int32_t scalar = has_floats ? LIMNO_F32 : LIMNO_F64;
-    const char *at[3];
+    const char *at[3], *name = field->name;
     for (int k = 0; k < 3; k++) at[k] = start + bytes * (size_t)(field->first + k) * (has_structs ? 1 : count);
     if (field->components == 1)
-        good(run, limno_lend(run, field->species, field->name, at[0], count, stride, scalar), field->name);
+        good(run, limno_lend(run, field->species, name, at[0], count, stride, scalar), name);
     else if (has_structs)
-        good(run, limno_lend_vector(run, field->species, field->name, at[0], count, stride, scalar), field->name);
+        good(run, limno_lend_vector(run, field->species, name, at[0], count, stride, scalar), name);
     else
-        good(run, limno_lend_xyz(run, field->species, field->name, at[0], at[1], at[2], count, stride, scalar), field->name);
+        good(run, limno_lend_xyz(run, field->species, name, at[0], at[1], at[2], count, stride, scalar), name);
 }
 
-static void lend_species(limno_run *run, int slot, const char *species, double (*all)[FIELDS], size_t count, size_t fields)
+static void lend_species(limno_run *run, int slot, const char *species, double (*all)[FIELDS], size_t count,
+                         size_t fields)
 {
     static size_t mine[GAS];
     static uint64_t wide[4][HOLES];
@@ -309,8 +321,9 @@ static void tally(limno_run *run, int step)
     static const char *const channels[3] = {"wind", "stellar_return", "black_hole"};
     for (uint64_t i = 0; i < EVENTS; i++) {
         if ((int)((i * 5 + seed) % (uint64_t)ranks) != rank) continue;
-        double mass = number_of(bits_of((int64_t)(1 + (draw(9, step, i, 0) >> 41)), (int)(draw(9, step, i, 1) % 90) - 60));
-        double energy = number_of(bits_of((int64_t)(draw(9, step, i, 2) >> 41) - (1 << 22), (int)(draw(9, step, i, 3) % 300) - 150));
+        int power = (int)(draw(9, step, i, 1) % 90) - 60, other = (int)(draw(9, step, i, 3) % 300) - 150;
+        double mass = number_of(bits_of((int64_t)(1 + (draw(9, step, i, 0) >> 41)), power));
+        double energy = number_of(bits_of((int64_t)(draw(9, step, i, 2) >> 41) - (1 << 22), other));
         limno_tally_batch batch = LIMNO_TALLY_BATCH_INIT;
         batch.channel = channels[i % 3], batch.count = 1, batch.mass = &mass, batch.energy = &energy;
         batch.momentum = &mass, batch.metals = &energy;
@@ -331,7 +344,8 @@ static void write_expected(const char *path)
 int main(int argc, char **argv)
 {
     if (argc != 9) {
-        fprintf(stderr, "usage: deal SERIES EXPECTED THREADS structs|arrays f32|f64 turn|blocks|halves|odd SEED native|128|256|mixed\n");
+        fprintf(stderr, "usage: deal SERIES EXPECTED THREADS structs|arrays f32|f64 turn|blocks|halves|odd SEED "
+                        "native|128|256|mixed\n");
         return 2;
     }
 #ifndef ALONE
@@ -365,7 +379,8 @@ int main(int argc, char **argv)
     }
     for (int step = 1; step <= STEPS; step++) {
         limno_clock clock = LIMNO_CLOCK_INIT;
-        clock.step = (uint64_t)step, clock.time = number_of(bits_of(127 + step, -8)), clock.step_length = number_of(bits_of(1, -8));
+        clock.step = (uint64_t)step, clock.time = number_of(bits_of(127 + step, -8));
+        clock.step_length = number_of(bits_of(1, -8));
         clock.checkpoint = step == 3;
         make_particles(step);
         good(run, limno_mark(run, &clock), "limno_mark");

@@ -98,9 +98,9 @@ int main(int argc, char **argv)
 
     uint64_t step = 0, count, as_floats = 0;
     while (fread(&count, sizeof count, 1, lists) == 1) {
-        double *mass = room(count * sizeof *mass), *rate = room(count * sizeof *rate), *scratch = room(count * sizeof *scratch);
+        double *mass = room(count * sizeof *mass), *rate = room(count * sizeof *rate);
+        double *scratch = room(count * sizeof *scratch), *backwards = room(count * sizeof *backwards);
         uint64_t *id = room(count * sizeof *id);
-        double *backwards = room(count * sizeof *backwards);
         struct star *star = room(count * sizeof *star);
         float *narrow = room(count * sizeof *narrow);
         need(fread(mass, sizeof *mass, count, lists) == count && fread(rate, sizeof *rate, count, lists) == count &&

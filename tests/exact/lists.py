@@ -121,7 +121,8 @@ def beyond_double_double(rng):
     """Three sizes more than 53 binary places apart: two doubles cannot hold them all until the large ones cancel."""
     for _ in range(60):
         gap, other = rng.randint(54, 300), rng.randint(54, 300)
-        large, middle, small = draw(rng, 300, 340), draw(rng, 300 - gap, 301 - gap), draw(rng, 299 - gap - other, 300 - gap - other)
+        large, middle = draw(rng, 300, 340), draw(rng, 300 - gap, 301 - gap)
+        small = draw(rng, 299 - gap - other, 300 - gap - other)
         yield [large, middle, small, -large, -middle]
         yield [small, middle, large, -middle, -large]
     # In many terms.

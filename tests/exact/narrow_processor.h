@@ -1,7 +1,7 @@
 /*
- * narrow_processor.h: a processor with narrower vectors than it has. The instruction `cpuid`, by which a program learns what the
- * processor can do, is made to fault (Linux arch_prctl(2), ARCH_SET_CPUID) and answered without what is to be hidden.
- * Bits as in the Intel Software Developer's Manual, volume 2A, CPUID.
+ * narrow_processor.h: makes the processor seem to have narrower vectors than it has. The instruction `cpuid`, by which a
+ * program learns what the processor can do, is made to fault (Linux arch_prctl(2), ARCH_SET_CPUID) and answered without
+ * what is to be hidden. Bits as in the Intel Software Developer's Manual, volume 2A, CPUID.
  */
 #ifndef NARROW_PROCESSOR_H
 #define NARROW_PROCESSOR_H
