@@ -19,7 +19,7 @@ use crate::team::{TeamError, Ticket};
 use std::time::{Duration, Instant};
 
 /// Reductions in flight before the oldest is waited for.
-const IN_FLIGHT: usize = 2;
+pub(super) const IN_FLIGHT: usize = 2;
 /// Contributions of a rank in error in flight before it leaves out further ones.
 const IN_DOUBT: usize = 64;
 /// How long a rank waits for the others within a step before it gives up the run (not the host).
