@@ -19,6 +19,8 @@ pub struct Accumulator {
     high: i64,
     low: i64,
     pending: usize,
+    /// Has the high word been enough so far?
+    is_narrow: bool,
     left_out: u64,
 }
 
@@ -32,6 +34,7 @@ impl Default for Accumulator {
             high: 0,
             low: 0,
             pending: 0,
+            is_narrow: true,
             left_out: 0,
         }
     }
@@ -68,6 +71,13 @@ impl Accumulator {
 
     fn add_chunk(&mut self, values: &[f64]) {
         if let Some(window) = self.window {
+            if self.is_narrow {
+                let sums = window::sum_in_one(values, window);
+                if !sums.fit.misfit && !sums.fit.remainder {
+                    return self.take(sums, values.len());
+                }
+                self.is_narrow = sums.fit.misfit;
+            }
             let sums = window::sum_in(values, window);
             if !sums.fit.misfit && !sums.fit.remainder {
                 return self.take(sums, values.len());

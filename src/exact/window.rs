@@ -118,6 +118,34 @@ pub(super) fn sum_in(values: &[f64], window: Window) -> Sums {
     }
 }
 
+/// Sums at most [`ROOM`] values in the high word of a window alone, which is enough for values of few digits: what it
+/// does not hold is a remainder.
+#[multiversion(targets(
+    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
+    "x86_64+avx+avx2",
+    "aarch64+neon"
+))]
+pub(super) fn sum_in_one(values: &[f64], window: Window) -> Sums {
+    let high = constant(window.high);
+    let (mut high_bits, mut remainders, mut changes) = (0u64, 0u64, 0u64);
+    for &value in values {
+        let coarse = value + high;
+        let rest = value - (coarse - high);
+        high_bits = high_bits.wrapping_add(coarse.to_bits());
+        changes |= coarse.to_bits() ^ high.to_bits();
+        remainders |= rest.to_bits();
+    }
+    let count = values.len() as u64;
+    Sums {
+        high: high_bits.wrapping_sub(count.wrapping_mul(high.to_bits())) as i64,
+        low: 0,
+        fit: Fit {
+            misfit: changes >> 52 != 0,
+            remainder: remainders << 1 != 0,
+        },
+    }
+}
+
 /// Splits values into the words of a window, one multiple each.
 #[multiversion(targets(
     "x86_64+avx512f+avx512dq+avx512vl+avx512bw",

@@ -12,6 +12,8 @@ pub struct Need {
     pub field: Field,
     /// Can the gauge do without it?
     pub optional: bool,
+    /// Does the gauge look at some elements only?
+    pub of_some: bool,
 }
 
 /// Exact sums of one gauge.
@@ -100,6 +102,18 @@ impl Plan {
             species,
             field,
             optional: false,
+            of_some: false,
+        });
+    }
+
+    /// As [`Plan::need`], for a gauge that looks at the field of some elements only: it is not made ready in blocks,
+    /// and read with [`crate::sweep::Block::gather`].
+    pub fn need_of_some(&mut self, species: Species, field: Field) {
+        self.add_need(Need {
+            species,
+            field,
+            optional: false,
+            of_some: true,
         });
     }
 
@@ -109,6 +123,7 @@ impl Plan {
             species,
             field,
             optional: true,
+            of_some: false,
         });
     }
 

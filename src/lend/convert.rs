@@ -74,10 +74,26 @@ vectorised! {
     }
 }
 
-/// Are all these doubles finite?
-pub(super) fn all_finite(values: &[f64]) -> bool {
-    let mark = |value: &f64| (value.to_bits() & !(1 << 63)) + STEP_64;
-    values.iter().fold(0, |marks, value| marks | mark(value)) >> 63 == 0
+vectorised! {
+    /// Are all these singles finite?
+    fn are_finite_singles(values: &[f32]) -> bool {
+        let mut largest = 0;
+        for value in values {
+            largest = largest.max(value.to_bits() & !(1 << 31));
+        }
+        largest < LIMIT_32
+    }
+}
+
+vectorised! {
+    /// Are all these doubles finite?
+    fn are_finite(values: &[f64]) -> bool {
+        let mut marks = 0;
+        for value in values {
+            marks |= (value.to_bits() & !(1 << 63)) + STEP_64;
+        }
+        marks >> 63 == 0
+    }
 }
 
 #[cfg(test)]
@@ -94,11 +110,12 @@ mod tests {
             let mut to = vec![0.0; doubles_given.len()];
             let finite = doubles(&doubles_given, &mut to);
             prop_assert_eq!(finite, doubles_given.iter().all(|value| value.is_finite()));
-            prop_assert_eq!(all_finite(&doubles_given), finite);
+            prop_assert_eq!(are_finite(&doubles_given), finite);
             prop_assert!(to.iter().zip(&doubles_given).all(|(a, b)| a.to_bits() == b.to_bits()));
 
             let mut to = vec![0.0; singles_given.len()];
             let finite = singles(&singles_given, &mut to);
+            prop_assert_eq!(are_finite_singles(&singles_given), finite);
             prop_assert_eq!(finite, singles_given.iter().all(|value| value.is_finite()));
             prop_assert!(to.iter().zip(&singles_given).all(|(a, b)| a.to_bits() == f64::from(*b).to_bits() || b.is_nan()));
 

@@ -251,7 +251,7 @@ impl View {
             Scalar::I64 => gather::<i64, f64>(base, stride, start, into, |x| x as f64),
             Scalar::U64 => gather::<u64, f64>(base, stride, start, into, |x| x as f64),
         }
-        self.shape.scalar.is_integer() || convert::all_finite(into)
+        self.shape.scalar.is_integer() || convert::are_finite(into)
     }
 
     /// Reads all three components of vectors, from element `start` on, as doubles. Returns whether all are finite.
@@ -284,6 +284,60 @@ impl View {
         self.read(0, start, x) & self.read(1, start, y) & self.read(2, start, z)
     }
 
+    /// Reads one component of some elements, numbered from `start` on, as doubles.
+    ///
+    /// # Panics
+    /// When an element is outside the view, or the lengths differ: a mistake of ours, not of a host.
+    pub fn read_some(&self, component: usize, start: usize, elements: &[u32], into: &mut [f64]) {
+        assert!(component < self.shape.components && elements.len() == into.len());
+        let within = self.count.saturating_sub(start);
+        let base = self.base(component);
+        let stride = self.shape.stride;
+        match self.shape.scalar {
+            Scalar::F32 => pick::<f32>(base, stride, start, within, elements, into, f64::from),
+            Scalar::F64 => pick::<f64>(base, stride, start, within, elements, into, |x| x),
+            Scalar::I32 => pick::<i32>(base, stride, start, within, elements, into, f64::from),
+            Scalar::U32 => pick::<u32>(base, stride, start, within, elements, into, f64::from),
+            Scalar::I64 => pick::<i64>(base, stride, start, within, elements, into, |x| x as f64),
+            Scalar::U64 => pick::<u64>(base, stride, start, within, elements, into, |x| x as f64),
+        }
+    }
+
+    /// Are all numbers of these elements finite?
+    ///
+    /// # Panics
+    /// As [`View::read`].
+    pub fn is_finite(&self, start: usize, length: usize) -> bool {
+        let components = self.shape.components;
+        self.check_block(components - 1, start, length);
+        let size = self.shape.scalar.bytes() as isize;
+        // Elements that follow each other without a gap are one long row of numbers.
+        let is_row = matches!(self.bases, Bases::Interleaved(_))
+            && self.shape.component_stride == size
+            && self.shape.stride == components as isize * size;
+        let (rows, numbers) = if is_row {
+            (1, components)
+        } else {
+            (components, 1)
+        };
+        let stride = self.shape.stride / numbers as isize;
+        (0..rows).all(|row| {
+            let base = self.base(row);
+            let (start, length) = (start * numbers, length * numbers);
+            match self.shape.scalar {
+                Scalar::F32 => match packed::<f32>(base, stride, start, length) {
+                    Some(values) => convert::are_finite_singles(values),
+                    None => every::<f32>(base, stride, start, length, |x| x.is_finite()),
+                },
+                Scalar::F64 => match packed::<f64>(base, stride, start, length) {
+                    Some(values) => convert::are_finite(values),
+                    None => every::<f64>(base, stride, start, length, |x| x.is_finite()),
+                },
+                _ => true,
+            }
+        })
+    }
+
     /// Lets the processor fetch the elements from `start` on, as far as there are any, into its cache.
     pub fn fetch_ahead(&self, start: usize, length: usize) {
         const LINE: usize = 64;
@@ -303,8 +357,8 @@ impl View {
             let (low, high) = (first.min(last), first.max(last));
             // Elements larger than a line are fetched where they begin.
             let step = LINE.max(stride.unsigned_abs() / LINE * LINE);
-            for address in (low..=high).step_by(step) {
-                fetch(address);
+            for line in 0..=(high - low) / step {
+                fetch(low + line * step);
             }
         }
     }
@@ -438,6 +492,45 @@ fn packed<'a, T: Copy>(base: usize, stride: isize, start: usize, length: usize) 
     // wrap, the caller that this block is inside it; that the host keeps the memory readable and unchanged is the
     // duty the header states. The slice is used within the call that made it.
     Some(unsafe { std::slice::from_raw_parts(first, length) })
+}
+
+/// Reads the numbers of some elements, of `within` from `start` on.
+fn pick<T: Copy>(
+    base: usize,
+    stride: isize,
+    start: usize,
+    within: usize,
+    elements: &[u32],
+    into: &mut [f64],
+    convert: impl Fn(T) -> f64,
+) {
+    let first = (base as *const T).wrapping_byte_offset(stride.wrapping_mul(start as isize));
+    for (&element, to) in elements.iter().zip(into) {
+        assert!((element as usize) < within);
+        let at = first.wrapping_byte_offset(stride.wrapping_mul(element as isize));
+        // SAFETY: as in `packed`, for this number, which has just been found to be one of the view's; stride and
+        // base are multiples of its size, so it is aligned.
+        *to = convert(unsafe { at.read() });
+    }
+}
+
+/// Does something hold for each of `length` numbers from `start` on?
+fn every<T: Copy>(
+    base: usize,
+    stride: isize,
+    start: usize,
+    length: usize,
+    holds: impl Fn(T) -> bool,
+) -> bool {
+    let mut at = (base as *const T).wrapping_byte_offset(stride.wrapping_mul(start as isize));
+    let mut all = true;
+    for _ in 0..length {
+        // SAFETY: as in `packed`, for this number, which the caller has found to be one of the view's; stride and
+        // base are multiples of its size, so it is aligned.
+        all &= holds(unsafe { at.read() });
+        at = at.wrapping_byte_offset(stride);
+    }
+    all
 }
 
 /// Reads numbers of type `T` at a stride and converts them; unit stride and constants have loops of their own.

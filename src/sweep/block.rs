@@ -1,9 +1,27 @@
 //! A block of elements: a few hundred at a time, as doubles, one run of numbers for each component.
 
-use crate::lend::{Field, Scalar, Shape, View};
+use crate::lend::{Field, Lot, Scalar, Shape, View};
 
 /// Elements in a block: few enough that all fields of a block stay in a core's cache.
-pub const BLOCK: usize = 128;
+pub const BLOCK: usize = 256;
+
+/// Numbers between two runs. Runs a power of two apart would share the lower bits of their addresses, and a
+/// processor takes a number that is read from one for a number just written to the other.
+const APART: usize = 24;
+
+/// One run of numbers.
+#[derive(Clone, Copy)]
+pub(super) struct Run {
+    numbers: [f64; BLOCK],
+    _apart: [f64; APART],
+}
+
+impl Run {
+    const EMPTY: Run = Run {
+        numbers: [0.0; BLOCK],
+        _apart: [0.0; APART],
+    };
+}
 
 /// Some of the fields.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
@@ -24,6 +42,10 @@ impl FieldSet {
         self.0 == 0
     }
 
+    pub fn without(self, other: FieldSet) -> FieldSet {
+        FieldSet(self.0 & !other.0)
+    }
+
     pub fn has(self, index: usize) -> bool {
         self.0 >> index & 1 == 1
     }
@@ -36,12 +58,17 @@ impl FieldSet {
 /// Elements of one species, all fields finite.
 pub struct Block<'a> {
     length: usize,
-    values: &'a [f64],
+    values: &'a [Run],
     identities: &'a [u64],
-    /// Where the first component of each field stands, in runs of [`BLOCK`]; none where it is not lent.
+    /// Where the first component of each field stands, by its number; meaningless where it is not lent.
     runs: &'a [u16; Field::COUNT],
     fields: FieldSet,
+    /// Those of the fields that stand in the runs.
+    loaded: FieldSet,
     singles: FieldSet,
+    /// Where the other fields are read, from element `start` on.
+    lot: &'a Lot,
+    start: usize,
 }
 
 impl<'a> Block<'a> {
@@ -65,20 +92,34 @@ impl<'a> Block<'a> {
         self.singles.has(field as usize)
     }
 
-    /// One component of a field; empty where the field is not lent.
+    /// One component of a field of some elements, also of a field that the gauge needs of some elements only.
+    ///
+    /// # Panics
+    /// When an element does not exist, or the lengths differ: a mistake of ours.
+    pub fn gather(&self, field: Field, component: usize, elements: &[u32], into: &mut [f64]) {
+        if self.loaded.has(field as usize) {
+            let run = self.run(field, component);
+            for (&element, to) in elements.iter().zip(into) {
+                *to = run[element as usize];
+            }
+        } else if let Some(view) = self.lot.view(field) {
+            view.read_some(component, self.start, elements, into);
+        }
+    }
+
+    /// One component of a field; empty where the field is not lent, or needed of some elements only.
     pub fn component(&self, field: Field, component: usize) -> &'a [f64] {
-        if !self.has(field) {
+        if !self.has(field) || !self.loaded.has(field as usize) {
             return &[];
         }
-        let start = (self.runs[field as usize] as usize + component) * BLOCK;
-        &self.values[start..start + self.length]
+        &self.run(field, component)[..self.length]
     }
 
     /// One component of a field that is lent, as long as the longest block; beyond the elements its content means
     /// nothing.
     pub fn run(&self, field: Field, component: usize) -> &'a [f64; BLOCK] {
         let run = self.runs[field as usize] as usize + component;
-        &self.values.as_chunks::<BLOCK>().0[run]
+        &self.values[run].numbers
     }
 
     /// The numbers of a field with one component.
@@ -108,18 +149,24 @@ const INDICES: usize = 3;
 
 /// Room in which a gauge computes the contributions of a block; its content is left over from whoever came before.
 pub struct Work {
-    /// Runs of numbers.
-    pub runs: Box<[[f64; BLOCK]; RUNS]>,
-    /// Runs of whole numbers.
-    pub indices: Box<[[u32; BLOCK]; INDICES]>,
+    runs: Box<[Run; RUNS]>,
+    indices: Box<[[u32; BLOCK]; INDICES]>,
 }
 
 impl Default for Work {
     fn default() -> Self {
         Work {
-            runs: Box::new([[0.0; BLOCK]; RUNS]),
+            runs: Box::new([Run::EMPTY; RUNS]),
             indices: Box::new([[0; BLOCK]; INDICES]),
         }
+    }
+}
+
+impl Work {
+    /// Runs of numbers, and runs of whole numbers.
+    pub fn parts(&mut self) -> ([&mut [f64; BLOCK]; RUNS], &mut [[u32; BLOCK]; INDICES]) {
+        let runs = self.runs.each_mut().map(|run| &mut run.numbers);
+        (runs, &mut self.indices)
     }
 }
 
@@ -127,7 +174,7 @@ impl Default for Work {
 pub(super) struct Buffers {
     length: usize,
     elements: usize,
-    values: Vec<f64>,
+    values: Vec<Run>,
     identities: Vec<u64>,
     runs: [u16; Field::COUNT],
     next_run: u16,
@@ -135,7 +182,7 @@ pub(super) struct Buffers {
     singles: FieldSet,
     /// Fields with a number in this block that is not finite.
     bad: FieldSet,
-    compact_values: Vec<f64>,
+    compact_values: Vec<Run>,
     compact_identities: Vec<u64>,
     kept: Vec<u32>,
 }
@@ -149,7 +196,7 @@ impl Buffers {
         Buffers {
             length: 0,
             elements,
-            values: vec![0.0; all * BLOCK],
+            values: vec![Run::EMPTY; all],
             identities: vec![0; BLOCK],
             runs: [0; Field::COUNT],
             next_run: 0,
@@ -183,19 +230,19 @@ impl Buffers {
             return 0;
         }
         let components = field.components(self.elements);
-        let first = self.next_run as usize * BLOCK;
+        let first = self.next_run as usize;
         self.next_run += components as u16;
         let length = self.length;
-        let runs = &mut self.values[first..first + components * BLOCK];
+        let runs = &mut self.values[first..first + components];
         let mut is_finite = true;
-        if let ([x, y, z], []) = runs.as_chunks_mut::<BLOCK>()
+        if let [x, y, z] = &mut *runs
             && field.info().shape == Shape::Vector
         {
-            let into = [&mut x[..length], &mut y[..length], &mut z[..length]];
+            let into = [x, y, z].map(|run| &mut run.numbers[..length]);
             is_finite = view.read_vectors(start, into);
         } else {
-            for (component, run) in runs.chunks_exact_mut(BLOCK).enumerate() {
-                is_finite &= view.read(component, start, &mut run[..length]);
+            for (component, run) in runs.iter_mut().enumerate() {
+                is_finite &= view.read(component, start, &mut run.numbers[..length]);
             }
         }
         if is_finite {
@@ -211,7 +258,7 @@ impl Buffers {
         let run = self.runs[field as usize] as usize;
         field.info().shape == Shape::Identity
             || (0..field.components(self.elements))
-                .all(|component| self.values[(run + component) * BLOCK + element].is_finite())
+                .all(|component| self.values[run + component].numbers[element].is_finite())
     }
 
     /// Are all these fields finite throughout the block?
@@ -219,9 +266,24 @@ impl Buffers {
         !self.bad.meets(fields)
     }
 
-    /// The whole block, restricted to some fields.
-    pub fn block(&self, fields: FieldSet) -> Block<'_> {
+    /// Looks whether a field's numbers are finite, without reading them into the block unless some are not; returns
+    /// how many elements have one that is not.
+    pub fn check(&mut self, field: Field, view: &View, start: usize) -> u64 {
+        if view.scalar() == Scalar::F32 {
+            self.singles.insert(field);
+        }
+        if view.is_finite(start, self.length) {
+            return 0;
+        }
+        self.load(field, view, start)
+    }
+
+    /// The whole block, restricted to some fields; `lot` holds it from element `start` on.
+    pub fn block<'a>(&'a self, fields: FieldSet, lot: &'a Lot, start: usize) -> Block<'a> {
         Block {
+            loaded: self.loaded,
+            lot,
+            start,
             length: self.length,
             values: &self.values,
             identities: &self.identities,
@@ -231,8 +293,23 @@ impl Buffers {
         }
     }
 
-    /// The elements for which all these fields are finite, moved together; none when there are none.
-    pub fn finite_only(&mut self, fields: FieldSet) -> Option<Block<'_>> {
+    /// The elements for which all these fields are finite, moved together; none when there are none. Fields that
+    /// were only looked at are read first, since elements have other numbers afterwards.
+    pub fn finite_only<'a>(
+        &'a mut self,
+        fields: FieldSet,
+        lot: &'a Lot,
+        start: usize,
+    ) -> Option<Block<'a>> {
+        for info in &crate::lend::FIELDS {
+            let index = info.field as usize;
+            if fields.has(index)
+                && !self.loaded.has(index)
+                && let Some(view) = lot.view(info.field)
+            {
+                self.load(info.field, view, start);
+            }
+        }
         let bad = FieldSet(self.bad.0 & fields.0);
         let mut kept = std::mem::take(&mut self.kept);
         kept.clear();
@@ -242,10 +319,10 @@ impl Buffers {
                 .filter(|info| bad.has(info.field as usize))
                 .all(|info| self.element_is_finite(info.field, element as usize))
         }));
-        self.compact_values.resize(self.values.len(), 0.0);
+        self.compact_values.resize(self.values.len(), Run::EMPTY);
         for run in 0..self.next_run as usize {
             for (to, from) in kept.iter().enumerate() {
-                self.compact_values[run * BLOCK + to] = self.values[run * BLOCK + *from as usize];
+                self.compact_values[run].numbers[to] = self.values[run].numbers[*from as usize];
             }
         }
         self.compact_identities.clear();
@@ -257,7 +334,7 @@ impl Buffers {
             length,
             values: &self.compact_values,
             identities: &self.compact_identities,
-            ..self.block(fields)
+            ..self.block(fields, lot, start)
         })
     }
 }

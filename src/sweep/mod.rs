@@ -39,6 +39,15 @@ pub struct Sweep {
     ready: Vec<(usize, FieldSet)>,
 }
 
+/// What a pass reads.
+#[derive(Clone, Copy, Default)]
+struct Fields {
+    /// Made ready in blocks.
+    in_blocks: FieldSet,
+    /// Read of some elements by some gauge.
+    of_some: FieldSet,
+}
+
 /// Where a count of numbers that are not finite stands.
 pub fn not_finite_index(species: Species, field: Field) -> usize {
     species as usize * Field::COUNT + field as usize
@@ -120,12 +129,13 @@ impl Sweep {
     }
 
     /// Finds the gauges that have what they need of a species, and all fields that they read.
-    fn resolve(&mut self, species: Species, lot: &Lot, plan: &Plan) -> FieldSet {
-        let mut fields = FieldSet::default();
+    fn resolve(&mut self, species: Species, lot: &Lot, plan: &Plan) -> Fields {
+        let mut fields = Fields::default();
         self.ready.clear();
         for (index, needs) in plan.needs.iter().enumerate() {
             let mut complete = true;
             let mut wanted = FieldSet::default();
+            let mut of_some = FieldSet::default();
             for (need, state) in needs.iter().zip(&mut self.needs[index]) {
                 if need.species != species {
                     continue;
@@ -144,10 +154,14 @@ impl Sweep {
                 } else {
                     state.with += 1;
                     wanted.insert(need.field);
+                    if need.of_some {
+                        of_some.insert(need.field);
+                    }
                 }
             }
             if complete && !wanted.is_empty() {
-                fields.extend(wanted);
+                fields.in_blocks.extend(wanted.without(of_some));
+                fields.of_some.extend(of_some);
                 self.ready.push((index, wanted));
             }
         }
@@ -183,7 +197,7 @@ struct Pass<'a> {
     gauges: &'a [Active],
     moment: &'a Moment,
     /// Every field that some gauge reads.
-    fields: FieldSet,
+    fields: Fields,
     /// Gauges that have what they need, with the fields they read.
     ready: &'a [(usize, FieldSet)],
 }
@@ -198,11 +212,11 @@ impl Pass<'_> {
         }
     }
 
-    fn views(&self) -> impl Iterator<Item = (Field, &crate::lend::View)> {
+    fn views(&self, fields: FieldSet) -> impl Iterator<Item = (Field, &crate::lend::View)> {
         FIELDS
             .iter()
             .map(|info| info.field)
-            .filter(|&field| self.fields.has(field as usize))
+            .filter(move |&field| fields.has(field as usize))
             .filter_map(|field| Some((field, self.lot.view(field)?)))
     }
 
@@ -213,21 +227,29 @@ impl Pass<'_> {
             buffers,
             work,
         } = worker;
+        let Fields { in_blocks, of_some } = self.fields;
         buffers.begin(length);
-        for (field, view) in self.views() {
+        for (field, view) in self.views(in_blocks) {
             let bad = buffers.load(field, view, start);
             not_finite[not_finite_index(self.species, field)] += bad;
         }
+        for (field, view) in self.views(of_some.without(in_blocks)) {
+            let bad = buffers.check(field, view, start);
+            not_finite[not_finite_index(self.species, field)] += bad;
+        }
         // While this block is measured the next one arrives.
-        for (_, view) in self.views() {
+        for (_, view) in self
+            .views(in_blocks)
+            .chain(self.views(of_some.without(in_blocks)))
+        {
             view.fetch_ahead(start + length, BLOCK);
         }
         for &(index, fields) in self.ready {
             let gauge = &self.gauges[index].gauge;
             if buffers.is_finite(fields) {
-                let block = buffers.block(fields);
+                let block = buffers.block(fields, self.lot, start);
                 gauge.measure(self.species, &block, self.moment, work, sample);
-            } else if let Some(block) = buffers.finite_only(fields) {
+            } else if let Some(block) = buffers.finite_only(fields, self.lot, start) {
                 gauge.measure(self.species, &block, self.moment, work, sample);
             }
         }

@@ -31,51 +31,31 @@ fn nearest_image(distance: f64, length: f64, inverse: f64) -> f64 {
     distance - length * ((distance * inverse + WHOLE) - WHOLE)
 }
 
-/// Positions relative to one station, and the squares of their distances.
-#[multiversion(targets(
-    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
-    "x86_64+avx+avx2",
-    "aarch64+neon"
-))]
-pub(super) fn distances(
-    from: [&[f64]; 3],
-    centre: [f64; 3],
-    periods: &Periods,
-    to: [&mut [f64]; 3],
-    squares: &mut [f64],
-) {
-    let (length, inverse) = (periods.lengths, periods.inverses);
-    let [x, y, z] = from;
-    let [dx, dy, dz] = to;
-    let elements = x.iter().zip(y).zip(z);
-    let results = dx.iter_mut().zip(dy).zip(dz).zip(squares);
-    for (((x, y), z), (((dx, dy), dz), square)) in elements.zip(results) {
-        *dx = nearest_image(x - centre[0], length[0], inverse[0]);
-        *dy = nearest_image(y - centre[1], length[1], inverse[1]);
-        *dz = nearest_image(z - centre[2], length[2], inverse[2]);
-        *square = *dx * *dx + *dy * *dy + *dz * *dz;
-    }
-}
-
-/// As [`distances`], for differences that have been taken already.
-#[multiversion(targets(
-    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
-    "x86_64+avx+avx2",
-    "aarch64+neon"
-))]
-pub(super) fn wrap(periods: &Periods, runs: [&mut [f64]; 3], squares: &mut [f64]) {
-    let (length, inverse) = (periods.lengths, periods.inverses);
-    let [dx, dy, dz] = runs;
-    for (((dx, dy), dz), square) in dx.iter_mut().zip(dy).zip(dz).zip(squares) {
-        *dx = nearest_image(*dx, length[0], inverse[0]);
-        *dy = nearest_image(*dy, length[1], inverse[1]);
-        *dz = nearest_image(*dz, length[2], inverse[2]);
-        *square = *dx * *dx + *dy * *dy + *dz * *dz;
-    }
-}
-
 /// Elements that one word of marks tells of.
 pub(super) const MARKS: usize = 64;
+/// Elements that are marked at a time.
+const BITS: usize = 8;
+
+/// Squared distances of elements from a station.
+#[multiversion(targets(
+    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
+    "x86_64+avx+avx2",
+    "aarch64+neon"
+))]
+pub(super) fn squares(
+    [x, y, z]: [&[f64; BLOCK]; 3],
+    centre: [f64; 3],
+    periods: &Periods,
+    squares: &mut [f64; BLOCK],
+) {
+    let (length, inverse) = (periods.lengths, periods.inverses);
+    for (((x, y), z), square) in x.iter().zip(y).zip(z).zip(squares) {
+        let dx = nearest_image(x - centre[0], length[0], inverse[0]);
+        let dy = nearest_image(y - centre[1], length[1], inverse[1]);
+        let dz = nearest_image(z - centre[2], length[2], inverse[2]);
+        *square = dx * dx + dy * dy + dz * dz;
+    }
+}
 
 /// Marks which squares lie from `low` to `high`, a bit each.
 #[multiversion(targets(
@@ -83,8 +63,11 @@ pub(super) const MARKS: usize = 64;
     "x86_64+avx+avx2",
     "aarch64+neon"
 ))]
-pub(super) fn mark(squares: &[f64; BLOCK], low: f64, high: f64, marks: &mut [u64; BLOCK / MARKS]) {
-    const BITS: usize = 8;
+pub(super) fn mark(
+    squares: &[f64; BLOCK],
+    (low, high): (f64, f64),
+    marks: &mut [u64; BLOCK / MARKS],
+) {
     for (word, squares) in marks.iter_mut().zip(squares.as_chunks::<MARKS>().0) {
         *word = 0;
         for (place, squares) in squares.as_chunks::<BITS>().0.iter().enumerate() {
@@ -97,8 +80,45 @@ pub(super) fn mark(squares: &[f64; BLOCK], low: f64, high: f64, marks: &mut [u64
     }
 }
 
-/// Distances from their squares, and what is carried outward: mass times radial velocity, relative to a shell that
-/// moves with velocity −`hubble` times its radius against the coordinates.
+/// Writes down the elements that are marked, of `length`; returns how many.
+pub(super) fn list(marks: &[u64; BLOCK / MARKS], length: usize, into: &mut [u32; BLOCK]) -> usize {
+    let mut count = 0;
+    for (word, &marks) in marks.iter().enumerate() {
+        let beyond = length.saturating_sub(word * MARKS);
+        let mut marks = if beyond < MARKS {
+            marks & ((1 << beyond) - 1)
+        } else {
+            marks
+        };
+        while marks != 0 {
+            // The remainder changes nothing; it lets the compiler leave out a check.
+            into[count % BLOCK] = (word * MARKS) as u32 + marks.trailing_zeros();
+            marks &= marks - 1;
+            count += 1;
+        }
+    }
+    count
+}
+
+/// Squared distances of elements from stations, of positions from which those of the stations have been subtracted.
+#[multiversion(targets(
+    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
+    "x86_64+avx+avx2",
+    "aarch64+neon"
+))]
+pub(super) fn distances(periods: &Periods, runs: [&mut [f64]; 3], squares: &mut [f64]) {
+    let (length, inverse) = (periods.lengths, periods.inverses);
+    let [dx, dy, dz] = runs;
+    for (((dx, dy), dz), square) in dx.iter_mut().zip(dy).zip(dz).zip(squares) {
+        *dx = nearest_image(*dx, length[0], inverse[0]);
+        *dy = nearest_image(*dy, length[1], inverse[1]);
+        *dz = nearest_image(*dz, length[2], inverse[2]);
+        *square = *dx * *dx + *dy * *dy + *dz * *dz;
+    }
+}
+
+/// Distances from their squares, and what is carried outward: mass times radial velocity, relative to a station of
+/// velocity `drift`, with the velocity of the expansion, `hubble` times the distance.
 #[multiversion(targets(
     "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
     "x86_64+avx+avx2",
@@ -108,6 +128,7 @@ pub(super) fn carry(
     positions: [&[f64]; 3],
     velocities: [&[f64]; 3],
     masses: &[f64],
+    drift: [f64; 3],
     hubble: f64,
     squares_to_radii: &mut [f64],
     fluxes: &mut [f64],
@@ -120,7 +141,7 @@ pub(super) fn carry(
     for ((((dx, dy), dz), ((vx, vy), vz)), (mass, (radius, flux))) in
         places.zip(motions).zip(masses.iter().zip(results))
     {
-        let along = dx * vx + dy * vy + dz * vz;
+        let along = dx * (vx - drift[0]) + dy * (vy - drift[1]) + dz * (vz - drift[2]);
         let r = radius.sqrt();
         let speed = along / r + hubble * r;
         let speed = if r > 0.0 { speed } else { 0.0 };
@@ -177,7 +198,7 @@ pub(super) fn find_bins(
     (low, high): (f64, f64),
     shells_to_bins: &mut [u32],
 ) -> bool {
-    let mut outside = 0;
+    let mut outside = 0u64;
     let contributions = radii.iter().zip(fluxes).zip(firsts);
     for (((&radius, &flux), first), bin) in contributions.zip(shells_to_bins) {
         *bin = first + 2 * *bin + u32::from(flux < 0.0);

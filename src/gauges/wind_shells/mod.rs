@@ -101,8 +101,9 @@ pub(super) fn build(section: &mut Section, config: &Config, plan: &mut Plan) -> 
     let stations = settings::stations(section);
     settings::check_against_box(section, config, frame, &edges);
 
-    for field in [Field::Position, Field::Velocity, Field::Mass] {
-        plan.need(Species::Gas, field);
+    plan.need(Species::Gas, Field::Position);
+    for field in [Field::Velocity, Field::Mass] {
+        plan.need_of_some(Species::Gas, field);
     }
     let bins = stations.len() * edges.len().saturating_sub(1) * DIRECTIONS;
     let (table, sums) = if stations.len() <= EACH {
@@ -178,48 +179,110 @@ impl WindShells {
         shells.squares = (first * first * (1.0 - MARGIN), last * last * (1.0 + MARGIN));
     }
 
-    /// Measures elements and stations that may be near each other: `pairs` of them stand in the first two runs of
-    /// indices (the element, the station), their distances in the first three runs of numbers, with the squares in
-    /// the fourth.
-    fn measure_pairs(&self, block: &Block, pairs: usize, work: &mut Work, sample: &mut Sample) {
+    /// Measures the elements of a block around the only station.
+    fn measure_around_one(&self, block: &Block, work: &mut Work, sample: &mut Sample) {
         let shells = &self.shells;
-        let all = self.edges.len() as u32 - 1;
-        let [elements, owners, bins] = &mut *work.indices;
-        let [dx, dy, dz, squares, vx, vy, vz, masses, fluxes, ..] = &mut *work.runs;
-        let from_velocity = [0, 1, 2].map(|axis| block.run(Field::Velocity, axis));
-        let from_mass = block.run(Field::Mass, 0);
-        let (low, high) = shells.squares;
+        let centre = self.stations[0].position;
+        let from = [0, 1, 2].map(|axis| block.run(Field::Position, axis));
         let mut marks = [0; BLOCK / flow::MARKS];
-        squares[pairs..].fill(f64::INFINITY);
-        flow::mark(squares, low, high, &mut marks);
-        let mut count = 0;
-        for (word, mut marks) in marks.into_iter().enumerate() {
-            while marks != 0 {
-                // The masks change nothing; they let the compiler leave out checks.
-                let from = (word * flow::MARKS + marks.trailing_zeros() as usize) % BLOCK;
-                let to = count % BLOCK;
-                marks &= marks - 1;
-                // Never after the place it comes from, so what is still to be moved is not overwritten.
-                (dx[to], dy[to], dz[to], squares[to]) =
-                    (dx[from], dy[from], dz[from], squares[from]);
-                let (element, owner) = (elements[from] as usize % BLOCK, owners[from]);
-                let velocity = &self.stations[owner as usize].velocity;
-                vx[to] = from_velocity[0][element] - velocity[0];
-                vy[to] = from_velocity[1][element] - velocity[1];
-                vz[to] = from_velocity[2][element] - velocity[2];
-                masses[to] = from_mass[element];
-                owners[to] = owner * all * DIRECTIONS as u32;
-                count += 1;
-            }
-        }
+        let ([dx, dy, dz, squares, ..], [elements, owners, _]) = work.parts();
+        flow::squares(from, centre, &shells.periods, squares);
+        flow::mark(squares, shells.squares, &mut marks);
+        let count = flow::list(&marks, block.len(), elements);
         if count == 0 {
             return;
+        }
+        owners[..count].fill(0);
+        for (axis, to) in [&mut *dx, dy, dz].into_iter().enumerate() {
+            for (to, &element) in to.iter_mut().zip(&elements[..count]) {
+                *to = from[axis][element as usize % BLOCK] - centre[axis];
+            }
+        }
+        let runs = [&mut dx[..count], &mut dy[..count], &mut dz[..count]];
+        flow::distances(&shells.periods, runs, &mut squares[..count]);
+        self.measure_pairs(block, count, work, sample);
+    }
+
+    /// Measures the elements of a block around those stations that each of them is near.
+    fn measure_around_many(&self, block: &Block, work: &mut Work, sample: &mut Sample) {
+        let positions = block.vector(Field::Position);
+        let [x, y, z] = positions;
+        let mut cells = [0; BLOCK];
+        self.grid.cells_of(positions, &mut cells[..block.len()]);
+        let mut pairs = 0;
+        for (element, &cell) in cells[..block.len()].iter().enumerate() {
+            for &owner in self.grid.near(cell) {
+                if pairs == BLOCK {
+                    self.measure_candidates(block, pairs, work, sample);
+                    pairs = 0;
+                }
+                let place = &self.stations[owner as usize].position;
+                let ([dx, dy, dz, ..], [elements, owners, _]) = work.parts();
+                dx[pairs] = x[element] - place[0];
+                dy[pairs] = y[element] - place[1];
+                dz[pairs] = z[element] - place[2];
+                elements[pairs] = element as u32;
+                owners[pairs] = owner;
+                pairs += 1;
+            }
+        }
+        self.measure_candidates(block, pairs, work, sample);
+    }
+
+    /// Measures those pairs of an element and a station that are within reach of each other. They stand in the first
+    /// two runs of indices, the differences of their positions in the first three runs of numbers.
+    fn measure_candidates(
+        &self,
+        block: &Block,
+        pairs: usize,
+        work: &mut Work,
+        sample: &mut Sample,
+    ) {
+        let ([dx, dy, dz, squares, ..], [elements, owners, _]) = work.parts();
+        let runs = [&mut dx[..pairs], &mut dy[..pairs], &mut dz[..pairs]];
+        flow::distances(&self.shells.periods, runs, &mut squares[..pairs]);
+        let (low, high) = self.shells.squares;
+        let mut count = 0;
+        for from in 0..pairs {
+            (dx[count], dy[count], dz[count]) = (dx[from], dy[from], dz[from]);
+            (elements[count], owners[count]) = (elements[from], owners[from]);
+            squares[count] = squares[from];
+            count += usize::from((squares[from] >= low) & (squares[from] <= high));
+        }
+        self.measure_pairs(block, count, work, sample);
+    }
+
+    /// Measures pairs of an element and a station that are within reach of each other, but for a margin. They stand
+    /// in the first two runs of indices, where the element is from the station in the first three runs of numbers,
+    /// and the square of its distance in the fourth.
+    fn measure_pairs(&self, block: &Block, pairs: usize, work: &mut Work, sample: &mut Sample) {
+        let shells = &self.shells;
+        let mut count = pairs;
+        let (runs, [elements, owners, bins]) = work.parts();
+        let [dx, dy, dz, squares, vx, vy, vz, masses, fluxes, ..] = runs;
+        for (axis, to) in [&mut *vx, vy, vz].into_iter().enumerate() {
+            block.gather(Field::Velocity, axis, &elements[..count], &mut to[..count]);
+        }
+        block.gather(Field::Mass, 0, &elements[..count], &mut masses[..count]);
+        // One station's velocity is subtracted together with the rest; subtracting 0 afterwards changes nothing.
+        let mut drift = self.stations[0].velocity;
+        if self.stations.len() > 1 {
+            drift = [0.0; 3];
+            let bins_of_each = (self.edges.len() as u32 - 1) * DIRECTIONS as u32;
+            for (index, owner) in owners[..count].iter_mut().enumerate() {
+                let velocity = &self.stations[*owner as usize].velocity;
+                vx[index] -= velocity[0];
+                vy[index] -= velocity[1];
+                vz[index] -= velocity[2];
+                *owner *= bins_of_each;
+            }
         }
         let radii = &mut squares[..count];
         flow::carry(
             [&dx[..count], &dy[..count], &dz[..count]],
             [&vx[..count], &vy[..count], &vz[..count]],
             &masses[..count],
+            drift,
             shells.hubble,
             radii,
             &mut fluxes[..count],
@@ -248,65 +311,6 @@ impl WindShells {
             &bins[..count],
             &[&fluxes[..count], &masses[..count]],
         );
-    }
-
-    fn measure_around_one(&self, station: usize, block: &Block, work: &mut Work) -> usize {
-        let length = block.len();
-        let [dx, dy, dz, squares, ..] = &mut *work.runs;
-        flow::distances(
-            block.vector(Field::Position),
-            self.stations[station].position,
-            &self.shells.periods,
-            [&mut dx[..length], &mut dy[..length], &mut dz[..length]],
-            &mut squares[..length],
-        );
-        let [elements, owners, _] = &mut *work.indices;
-        for (index, element) in elements[..length].iter_mut().enumerate() {
-            *element = index as u32;
-        }
-        owners[..length].fill(station as u32);
-        length
-    }
-
-    fn measure_around_many(&self, block: &Block, work: &mut Work, sample: &mut Sample) {
-        let positions = block.vector(Field::Position);
-        let [x, y, z] = positions;
-        let mut cells = [0; BLOCK];
-        self.grid.cells_of(positions, &mut cells[..block.len()]);
-        let mut pairs = 0;
-        for (element, &cell) in cells[..block.len()].iter().enumerate() {
-            for &owner in self.grid.near(cell) {
-                if pairs == BLOCK {
-                    self.measure_candidates(block, pairs, work, sample);
-                    pairs = 0;
-                }
-                let place = &self.stations[owner as usize].position;
-                let [dx, dy, dz, ..] = &mut *work.runs;
-                dx[pairs] = x[element] - place[0];
-                dy[pairs] = y[element] - place[1];
-                dz[pairs] = z[element] - place[2];
-                work.indices[0][pairs] = element as u32;
-                work.indices[1][pairs] = owner;
-                pairs += 1;
-            }
-        }
-        self.measure_candidates(block, pairs, work, sample);
-    }
-
-    fn measure_candidates(
-        &self,
-        block: &Block,
-        pairs: usize,
-        work: &mut Work,
-        sample: &mut Sample,
-    ) {
-        let [dx, dy, dz, squares, ..] = &mut *work.runs;
-        flow::wrap(
-            &self.shells.periods,
-            [&mut dx[..pairs], &mut dy[..pairs], &mut dz[..pairs]],
-            &mut squares[..pairs],
-        );
-        self.measure_pairs(block, pairs, work, sample);
     }
 
     /// Physical radii of the edges of each shell, in cm.
@@ -439,11 +443,9 @@ impl Gauge for WindShells {
             return;
         }
         if self.stations.len() > FEW {
-            return self.measure_around_many(block, work, sample);
-        }
-        for station in 0..self.stations.len() {
-            let pairs = self.measure_around_one(station, block, work);
-            self.measure_pairs(block, pairs, work, sample);
+            self.measure_around_many(block, work, sample);
+        } else {
+            self.measure_around_one(block, work, sample);
         }
     }
 
