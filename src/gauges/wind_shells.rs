@@ -20,12 +20,12 @@ use super::plan::{Counts, Plan, Sums, TableHandle};
 use super::{Entry, Gauge, Moment, Presence, Reading, Sample};
 use crate::config::{Config, Quantity, Section, Volume};
 use crate::lend::{Field, Species};
-use crate::series::record::{Row, Value};
 use crate::series::schema::{Column, Kind, ValueType};
 use crate::sweep::{Block, Work};
 use crate::units::Dimension;
 use crate::units::constants::{KILOPARSEC, SOLAR_MASS, YEAR};
 use multiversion::multiversion;
+use std::sync::Arc;
 
 const OUTWARD: usize = 0;
 const INWARD: usize = 1;
@@ -50,7 +50,7 @@ struct Shells {
 }
 
 struct WindShells {
-    station: String,
+    station: Arc<str>,
     /// In host position units.
     position: [f64; 3],
     /// In host velocity units.
@@ -97,7 +97,7 @@ pub(super) fn build(section: &mut Section, config: &Config, plan: &mut Plan) -> 
     );
     let shells = edges.len().saturating_sub(1);
     Box::new(WindShells {
-        station: name,
+        station: name.into(),
         position,
         velocity,
         volume: config.volume,
@@ -396,7 +396,7 @@ impl Gauge for WindShells {
     fn enter(&mut self, reading: &Reading, moment: &Moment, entry: &mut Entry) {
         let measured = reading.presence(Species::Gas) == Presence::Measured;
         if measured && self.shells(moment).fitting + 1 < self.edges.len() {
-            entry.notes.push(
+            entry.note(
                 "a shell reaches beyond half the periodic box and is null as long as it does",
             );
         }
@@ -412,29 +412,24 @@ impl Gauge for WindShells {
         };
         for (index, edges) in self.edges.windows(2).enumerate() {
             let (inner, outer) = (edges[0] * physical, edges[1] * physical);
-            let mut values = vec![
-                Value::Unsigned(moment.step),
-                Value::Text(self.station.clone()),
-                Value::Unsigned(index as u64),
-                Value::Float(inner / KILOPARSEC),
-                Value::Float(outer / KILOPARSEC),
-            ];
+            entry.row(self.table);
+            entry.cell(moment.step);
+            entry.cell(&self.station);
+            entry.cell(index as u64);
+            entry.cell(inner / KILOPARSEC);
+            entry.cell(outer / KILOPARSEC);
             if index < fitting {
                 let rate = moment.factors.mass * moment.factors.velocity / (outer - inner) * YEAR
                     / SOLAR_MASS;
                 let sum = |which: usize| reading.sum(self.sums, index * SUMS + which);
                 // Subtracting from zero keeps a zero inflow a plain zero.
-                values.push(Value::Float(sum(OUTWARD) * rate));
-                values.push(Value::Float(0.0 - sum(INWARD) * rate));
-                values.push(Value::Float(sum(MASS) * moment.factors.mass / SOLAR_MASS));
-                values.push(Value::Unsigned(reading.reduced.count(self.inside, index)));
+                entry.cell(sum(OUTWARD) * rate);
+                entry.cell(0.0 - sum(INWARD) * rate);
+                entry.cell(sum(MASS) * moment.factors.mass / SOLAR_MASS);
+                entry.cell(reading.reduced.count(self.inside, index));
             } else {
-                values.extend((0..4).map(|_| Value::Null));
+                entry.null_cells(4);
             }
-            entry.rows.push(Row {
-                table: self.table.0,
-                values,
-            });
         }
     }
 }

@@ -39,6 +39,7 @@ impl Core {
         }
         let _ = self.sleeps.set(why.clone());
         self.let_go();
+        self.verdicts.clear();
         self.asleep = Some(why);
         fault
     }
@@ -90,6 +91,10 @@ impl Core {
         if self.team.size() == 1 {
             return self.flush(CLOSE_PATIENCE);
         }
+        let verdict = self.verdicts.drain(..).flatten().next();
+        if let Some(why) = verdict {
+            self.fall_asleep(why);
+        }
         for _ in 0..CLOSE_ROUNDS {
             self.sweep.clear();
             let mut buffer = self.spare.pop().unwrap_or_default();
@@ -100,6 +105,7 @@ impl Core {
                     ticket,
                     context: Context { moment: None },
                     doubt: None,
+                    is_sure: true,
                 }),
                 Err(error) => return Err(self.lose_team(&error, CLOSE_PATIENCE)),
             }

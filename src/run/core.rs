@@ -120,6 +120,8 @@ pub(super) struct Core {
     pub(super) last_tick: Option<Tick>,
     /// Contributions that have been started and not yet taken in.
     pub(super) flights: VecDeque<Flight>,
+    /// Of reductions that have been taken in and not yet acted upon: must all ranks sleep, and why?
+    pub(super) verdicts: VecDeque<Option<String>>,
     /// Steps to which contributions in doubt turned out to belong.
     pub(super) stood_in: Vec<u64>,
     pub(super) spare: Vec<Vec<u64>>,
@@ -136,6 +138,8 @@ pub(super) struct Core {
     /// Time in the library since the last contribution, and when that was.
     pub(super) spent: u64,
     pub(super) since: Instant,
+    /// Time spent waiting for reductions since the last contribution, in ns.
+    pub(super) waited: u64,
 }
 
 impl Core {
@@ -171,6 +175,7 @@ impl Core {
             last_row: None,
             last_tick: None,
             flights: VecDeque::new(),
+            verdicts: VecDeque::new(),
             stood_in: Vec::new(),
             spare: Vec::new(),
             trouble: None,
@@ -182,6 +187,7 @@ impl Core {
             rows: 0,
             spent: 0,
             since: Instant::now(),
+            waited: 0,
         }
     }
 
@@ -383,7 +389,9 @@ impl Core {
                 .sound(species, lot, &self.gauges, &self.plan, moment);
             self.sounded[species as usize] = true;
         }
-        lot.let_go();
+        if lot.is_touched() {
+            lot.let_go();
+        }
         Ok(())
     }
 
@@ -402,7 +410,10 @@ impl Core {
 
     /// Lets go of every array: nothing lent outlives its step.
     pub(super) fn let_go(&mut self) {
-        self.lots.iter_mut().for_each(Lot::let_go);
+        // Most have been let go of already, and emptying one is a kilobyte of work.
+        for lot in self.lots.iter_mut().filter(|lot| lot.is_touched()) {
+            lot.let_go();
+        }
         self.sounded = Default::default();
         self.misnamed = false;
     }
