@@ -261,25 +261,24 @@ impl Core {
     }
 
     fn check_shape(&self, species: Species, field: Field, shape: ArrayShape) -> Result<(), Fault> {
-        let name = format!("{} {}", species.name(), field.name());
+        let wrong = |text: String| {
+            let name = format!("{} {}", species.name(), field.name());
+            Fault::err(Status::BadArgument, format!("{name}: {text}"))
+        };
         let components = field.components(self.config.elements.len());
         if components == 0 {
-            let text =
-                format!("{name}: the config names no elements; list them under [elements] names");
-            return Fault::err(Status::BadArgument, text);
+            let text = "the config names no elements; list them under [elements] names";
+            return wrong(text.to_string());
         }
         if shape.components != components {
-            let text = format!(
-                "{name}: lent with {} numbers an element, expected {components}",
-                shape.components
-            );
-            return Fault::err(Status::BadArgument, text);
+            let numbers = shape.components;
+            return wrong(format!(
+                "lent with {numbers} numbers an element, expected {components}"
+            ));
         }
         if field.info().shape == Shape::Identity && !shape.scalar.is_integer() {
-            let text = format!(
-                "{name}: identities must be integers (LIMNO_I32, LIMNO_U32, LIMNO_I64 or LIMNO_U64)"
-            );
-            return Fault::err(Status::BadArgument, text);
+            let text = "identities must be integers (LIMNO_I32, LIMNO_U32, LIMNO_I64 or LIMNO_U64)";
+            return wrong(text.to_string());
         }
         Ok(())
     }
@@ -386,7 +385,7 @@ impl Core {
         let lot = &mut self.lots[species as usize];
         if lot.is_touched() && self.asleep_alone.is_none() {
             self.sweep
-                .sound(species, lot, &self.gauges, &self.plan, moment);
+                .sound(species, lot, &mut self.gauges, &self.plan, moment);
             self.sounded[species as usize] = true;
         }
         if lot.is_touched() {
