@@ -362,10 +362,10 @@ pub unsafe extern "C" fn limno_enter(run: *mut LimnoRun) -> Status {
 /// Completes the rows of all steps entered so far, where limno_enter would leave up to two of them for later.
 /// Collective: every rank calls it after the same limno_enter; waits until all have entered that step.
 ///
-/// When it returns on rank 0 these rows are with the thread that writes them: they are in the series within
-/// milliseconds if the disk takes them, whatever else the host does but end. They are not yet safe from a crash of
-/// the machine: for that, mark the step as checkpoint. Needed only by hosts that look at the series while they run,
-/// or that are about to do something from which they may not come back.
+/// When it returns on rank 0 these rows are with the thread that writes them: if the disk takes them they are in
+/// the series within milliseconds, and then survive the end of the process. They are not yet safe from a power cut:
+/// for that, mark the step as checkpoint. Needed only by hosts that look at the series while they run, or that are
+/// about to do something from which they may not come back.
 ///
 /// # Safety
 /// None beyond what the type says; any handle is answered.

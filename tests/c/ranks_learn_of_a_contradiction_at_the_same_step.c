@@ -12,7 +12,8 @@
 
 enum { STEPS = 12, CALLS = 3 };
 
-/* `late`: the rank that is late at every step; `eager`: it then looks at each call whether anything has completed. */
+/* `late`: the rank that comes late to every step; the one after it dawdles within the step, so that it finds more
+ * reductions complete than others when it enters. */
 static void contradict(int number, uint64_t at, int late, int flushes)
 {
     char name[32];
