@@ -109,6 +109,7 @@ module limnograph_interface
     type(c_ptr) :: elements = c_null_ptr
     type(c_ptr) :: position = c_null_ptr
     type(c_ptr) :: particle_id = c_null_ptr
+    integer(c_size_t) :: elements_each = 0
   end type c_tally_batch
 
   type, bind(c) :: c_standing
@@ -192,6 +193,12 @@ module limnograph_interface
       type(c_ptr), value :: run
       integer(c_int32_t) :: answer
     end function c_limno_enter
+
+    function c_limno_flush(run) bind(c, name="limno_flush") result(answer)
+      import :: c_int32_t, c_ptr
+      type(c_ptr), value :: run
+      integer(c_int32_t) :: answer
+    end function c_limno_flush
 
     function c_limno_close(run) bind(c, name="limno_close") result(answer)
       import :: c_int32_t, c_ptr
@@ -318,7 +325,7 @@ module limnograph
   end interface limno_lend_constant
 
   public :: limno_open, limno_due, limno_mark, limno_lend, limno_lend_constant, limno_tally
-  public :: limno_sound, limno_enter, limno_close
+  public :: limno_sound, limno_enter, limno_flush, limno_close
   public :: limno_last_error, limno_status_name, limno_version, limno_how_it_stands
 
   ! Where an array stands in memory: the address of its first number, and for each dimension how
@@ -454,6 +461,13 @@ contains
     call conclude(run, c_limno_enter(run%handle), status)
   end subroutine limno_enter
 
+  ! Completes the rows of all steps entered so far and hands them to the writer. Collective.
+  subroutine limno_flush(run, status)
+    type(limno_run), intent(inout) :: run
+    integer, intent(out), optional :: status
+    call conclude(run, c_limno_flush(run%handle), status)
+  end subroutine limno_flush
+
   ! Posts a batch of events on a channel: each array has one entry an event, `position` is (3,
   ! events) and `elements` (elements named in the config, events). What is not known is left out;
   ! `count` is only needed when all arrays are. The arrays are read at once, so that expressions
@@ -507,6 +521,7 @@ contains
       if (present(particle_id)) batch%particle_id = c_loc(particle_id)
       if (present(elements)) then
         if (size(elements) > 0) batch%elements = c_loc(elements)
+        batch%elements_each = size(elements, 1, kind=c_size_t)
       end if
     end if
     call conclude(run, c_limno_tally(run%handle, batch), status)

@@ -351,6 +351,11 @@ typedef struct limno_tally_batch {
      * The particle it happened to. Reserved: no gauge uses it yet.
      */
     const uint64_t *particle_id;
+    /**
+     * How many numbers an event has in `elements`; 0: as many as the config names elements. Any other number
+     * than that is an error, so that a host that counts otherwise is told before its arrays are read.
+     */
+    size_t elements_each;
 } limno_tally_batch;
 
 /**
@@ -596,13 +601,28 @@ limno_status limno_sound(struct limno_run *run, const char *species);
  * The step is over: sounds what is still lent, lets go of every array, reduces, and enters the row in the log.
  * Collective on steps that are due: every rank calls it, with the same step.
  *
- * Rows are completed up to two measured steps later, so that no rank waits for another; limno_close, and steps
- * marked as checkpoint, complete all.
+ * Rows are completed up to two measured steps later, so that no rank waits for another; limno_close, limno_flush,
+ * and steps marked as checkpoint, complete all. What concerns all ranks alike, such as LIMNO_ASLEEP, is answered
+ * from the same step on by every rank: the second measured step after the one that it follows from, or at a flush.
  *
  * The host's duty:
  * What was lent must still be readable.
  */
 limno_status limno_enter(struct limno_run *run);
+
+/**
+ * Completes the rows of all steps entered so far, where limno_enter would leave up to two of them for later.
+ * Collective: every rank calls it after the same limno_enter; waits until all have entered that step.
+ *
+ * When it returns on rank 0 these rows are with the thread that writes them: if the disk takes them they are in
+ * the series within milliseconds, and then survive the end of the process. They are not yet safe from a power cut:
+ * for that, mark the step as checkpoint. Needed only by hosts that look at the series while they run, or that are
+ * about to do something from which they may not come back.
+ *
+ * The host's duty:
+ * None beyond what the type says; any handle is answered.
+ */
+limno_status limno_flush(struct limno_run *run);
 
 /**
  * Completes all rows, writes them, and ends the run. Collective. The handle is then closed: using it again is
@@ -645,6 +665,6 @@ limno_status limno_how_it_stands(const struct limno_run *run, struct limno_stand
 /* Starting values for the structs that a host fills. */
 #define LIMNO_CLOCK_INIT { sizeof(limno_clock), 0, 0.0, 0.0, 1, 0 }
 #define LIMNO_ARRAY_INIT { sizeof(limno_array), 0, 1, NULL, NULL, 0, 0 }
-#define LIMNO_TALLY_BATCH_INIT { sizeof(limno_tally_batch), NULL, 0, NULL, NULL, NULL, NULL, NULL, NULL, NULL }
+#define LIMNO_TALLY_BATCH_INIT { sizeof(limno_tally_batch), NULL, 0, NULL, NULL, NULL, NULL, NULL, NULL, NULL, 0 }
 #define LIMNO_OPTIONS_INIT { sizeof(limno_options), NULL, NULL, NULL, NULL, 0, 0 }
 #define LIMNO_STANDING_INIT { sizeof(limno_standing), 0, 0, 0, 0, 0, 0.0 }

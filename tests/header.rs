@@ -68,7 +68,7 @@ const TRAILER: &str = "\
 /* Starting values for the structs that a host fills. */
 #define LIMNO_CLOCK_INIT { sizeof(limno_clock), 0, 0.0, 0.0, 1, 0 }
 #define LIMNO_ARRAY_INIT { sizeof(limno_array), 0, 1, NULL, NULL, 0, 0 }
-#define LIMNO_TALLY_BATCH_INIT { sizeof(limno_tally_batch), NULL, 0, NULL, NULL, NULL, NULL, NULL, NULL, NULL }
+#define LIMNO_TALLY_BATCH_INIT { sizeof(limno_tally_batch), NULL, 0, NULL, NULL, NULL, NULL, NULL, NULL, NULL, 0 }
 #define LIMNO_OPTIONS_INIT { sizeof(limno_options), NULL, NULL, NULL, NULL, 0, 0 }
 #define LIMNO_STANDING_INIT { sizeof(limno_standing), 0, 0, 0, 0, 0, 0.0 }
 ";

@@ -173,9 +173,11 @@ fn series_with_two_radii(steps: u64) -> (tempfile::TempDir, PathBuf) {
     let series = Series::open(&path, opening).expect("opens");
     for step in 0..steps {
         let mut entered = record(step);
-        for row in entered.rows.iter_mut().filter(|row| row.table == 1) {
+        let mut rows = entered.rows.to_vec();
+        for row in rows.iter_mut().filter(|row| row.table == 1) {
             row.values.insert(place + 1, row.values[place].clone());
         }
+        entered.rows = rows.into();
         enter(&series, entered);
     }
     series.close(PATIENCE).expect("closes");
@@ -244,7 +246,7 @@ fn audit_counts_no_step_for_a_record_that_only_tells_of_an_event() {
     let series = Series::open(&path, opening()).expect("opens");
     let mut note = record(1);
     enter(&series, record(1));
-    note.rows = vec![common::event(1, "library", "the run fell asleep")];
+    note.rows = vec![common::event(1, "library", "the run fell asleep")].into();
     enter(&series, note);
     series.close(PATIENCE).expect("closes");
     let text = out(&run("audit", &path, &[]));
@@ -290,7 +292,7 @@ fn export_writes_names_with_units_and_cells_that_read_back() {
         .collect();
     assert_eq!(rows.len(), 70);
     for (step, row) in rows.iter().enumerate() {
-        let values = &record(step as u64).rows[0].values;
+        let values = &record(step as u64).rows.to_vec()[0].values;
         assert_eq!(row.len(), header.len());
         let read: f64 = row[rate].parse().expect("number");
         assert_eq!(limnograph::series::record::Value::Float(read), values[4]);

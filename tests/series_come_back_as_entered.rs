@@ -24,7 +24,7 @@ fn cells(reader: &SeriesReader, table: &str, selection: Selection) -> Vec<Vec<Va
 
 fn expected(table: u32, steps: std::ops::Range<u64>) -> Vec<Vec<Value>> {
     steps
-        .flat_map(|step| record(step).rows)
+        .flat_map(|step| record(step).rows.to_vec())
         .filter(|row| row.table == table)
         .map(|row| row.values)
         .collect()
@@ -140,7 +140,9 @@ fn a_leg_that_measured_nothing_supersedes_nothing() {
     let series = Series::open(&path, opening()).expect("opens");
     // Only a note, from a host that failed before its first step.
     let mut note = record(0);
-    note.rows.retain(|row| row.table == 2);
+    let mut rows = note.rows.to_vec();
+    rows.retain(|row| row.table == 2);
+    note.rows = rows.into();
     assert_eq!(note.rows.len(), 1);
     enter(&series, note);
     series.close(PATIENCE).expect("closes");
@@ -166,8 +168,10 @@ fn columns_of_other_legs_are_null_where_they_were_not_measured() {
     let series = Series::open(&path, fewer).expect("opens");
     for step in 10..20 {
         let mut changed = record(step);
-        let value = changed.rows[0].values.remove(at);
-        changed.rows[0].values.push(value);
+        let mut rows = changed.rows.to_vec();
+        let value = rows[0].values.remove(at);
+        rows[0].values.push(value);
+        changed.rows = rows.into();
         enter(&series, changed);
     }
     series.close(PATIENCE).expect("closes");

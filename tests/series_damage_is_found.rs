@@ -55,14 +55,14 @@ fn record(step: u64) -> Record {
         },
         Row {
             table: 1,
-            values: vec![Value::Text(format!("step {step}"))],
+            values: vec![Value::from(format!("step {step}").as_str())],
         },
     ];
     Record {
         step,
         time: step as f64,
         step_length: 1.0,
-        rows,
+        rows: rows.into(),
         carry: vec![step],
     }
 }
@@ -131,10 +131,13 @@ fn steps_read(reader: &SeriesReader) -> Vec<u64> {
                 Value::Float(x) => Some(x.to_bits()),
                 _ => None,
             };
-            let Row { values, .. } = record(step).rows.swap_remove(0);
+            let Row { values, .. } = record(step).rows.to_vec().swap_remove(0);
             assert_eq!(steps.value(row), values[0]);
             assert_eq!(bits(x.value(row)), bits(values[1].clone()));
-            assert_eq!(notes.value(row), Value::Text(format!("step {step}")));
+            assert_eq!(
+                notes.value(row),
+                Value::from(format!("step {step}").as_str())
+            );
             step
         })
         .collect()

@@ -71,7 +71,7 @@ fn read_record(payload: &[u8], schema: &Json) -> (usize, u64, Record) {
     assert!(entered > 1_700_000_000_000, "milliseconds since 1970");
     let (words, rows) = (bytes.four(), bytes.four());
     let carry = (0..words).map(|_| bytes.eight()).collect();
-    let rows = (0..rows)
+    let rows: Vec<_> = (0..rows)
         .map(|_| {
             let (table, length) = (bytes.four(), bytes.four());
             let values = read_row(bytes.take(length), &schema["tables"][table]["columns"]);
@@ -89,7 +89,7 @@ fn read_record(payload: &[u8], schema: &Json) -> (usize, u64, Record) {
             step,
             time,
             step_length,
-            rows,
+            rows: rows.into(),
             carry,
         },
     )
@@ -114,7 +114,7 @@ fn read_row(row: &[u8], columns: &Json) -> Vec<Value> {
             ("unsigned", _) => Value::Counts((0..length).map(|_| bytes.eight()).collect()),
             ("text", _) => {
                 let length = bytes.four();
-                Value::Text(String::from_utf8(bytes.take(length).to_vec()).expect("UTF-8"))
+                Value::from(std::str::from_utf8(bytes.take(length)).expect("UTF-8"))
             }
             other => panic!("a value type that the page does not know: {other:?}"),
         }

@@ -36,7 +36,9 @@ fn value((kind, length): (ValueType, u32)) -> BoxedStrategy<Value> {
         (ValueType::Float, 1) => float().prop_map(Value::Float).boxed(),
         (ValueType::Integer, _) => any::<i64>().prop_map(Value::Integer).boxed(),
         (ValueType::Unsigned, 1) => any::<u64>().prop_map(Value::Unsigned).boxed(),
-        (ValueType::Text, _) => ".{0,20}".prop_map(Value::Text).boxed(),
+        (ValueType::Text, _) => ".{0,20}"
+            .prop_map(|text| Value::from(text.as_str()))
+            .boxed(),
         (ValueType::Float, _) => prop::collection::vec(float(), length as usize)
             .prop_map(Value::Floats)
             .boxed(),
@@ -77,7 +79,7 @@ fn schema_and_record() -> impl Strategy<Value = (Schema, Record)> {
                     step,
                     time,
                     step_length,
-                    rows,
+                    rows: rows.into(),
                     carry,
                 },
             )
@@ -125,9 +127,9 @@ fn bits(record: &Record) -> Vec<Vec<String>> {
             record.step_length.to_bits()
         ),
     ]];
-    all.extend(record.rows.iter().map(|row| {
-        std::iter::once(row.table.to_string())
-            .chain(row.values.iter().map(cell))
+    all.extend(record.rows.iter().map(|(table, values)| {
+        std::iter::once(table.to_string())
+            .chain(values.iter().map(cell))
             .collect()
     }));
     all

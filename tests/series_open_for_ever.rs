@@ -32,7 +32,7 @@ fn format_1_reads_as_it_was_written() {
             .map(|column| table.column_rows(column, 0..table.rows()))
             .collect();
         let expected = (0..16)
-            .flat_map(|step| record(step).rows)
+            .flat_map(|step| record(step).rows.to_vec())
             .filter(|row| row.table == number as u32);
         for (row, expected) in expected.enumerate() {
             for (column, value) in columns.iter().zip(&expected.values) {

@@ -34,7 +34,7 @@ fn record(step: u64) -> Record {
         step,
         time: step as f64,
         step_length: 1.0,
-        rows: vec![Row { table: 0, values }],
+        rows: vec![Row { table: 0, values }].into(),
         carry: vec![],
     }
 }
@@ -145,7 +145,7 @@ fn a_schema_or_record_that_makes_no_sense_is_refused() {
 
     let series = Series::open(&path, opening()).expect("opens");
     let mut wrong = record(3);
-    wrong.rows[0].values[1] = Value::Unsigned(3);
+    wrong.rows.set_in_first(1, Value::Unsigned(3));
     let error = series.enter(wrong).expect_err("misfit");
     assert_eq!(error.trouble, Trouble::Misfit);
     assert!(

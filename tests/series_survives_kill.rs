@@ -136,7 +136,10 @@ fn every_row_that_was_written_outlives_the_process() {
                 (run.step(row), run.time(row)),
                 (Some(row as u64), Some(time_of(row as u64)))
             );
-            assert_eq!(rates.value(row), record(row as u64).rows[0].values[4]);
+            assert_eq!(
+                rates.value(row),
+                record(row as u64).rows.to_vec()[0].values[4]
+            );
         }
         // The next host restarts from a checkpoint some steps back.
         next_step = standing.saturating_sub(u64::from(round) % 7 * 3);

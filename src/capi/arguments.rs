@@ -12,6 +12,8 @@ use std::ffi::{CStr, c_char, c_void};
 const LONGEST_TEXT: usize = 1 << 20;
 /// Most components a field can have.
 const MOST_COMPONENTS: u32 = 4096;
+/// What stands for a list of pointers that is not read.
+static NO_ADDRESSES: [usize; MOST_COMPONENTS as usize] = [0; MOST_COMPONENTS as usize];
 /// Most events in a batch.
 const MOST_EVENTS: usize = 1 << 40;
 /// What is wrong where a handle has no place to go.
@@ -24,8 +26,8 @@ fn bad<T>(text: String) -> Result<T, Fault> {
 /// Reads a text that must be there.
 ///
 /// # Safety
-/// `pointer` is null or leads to a text with an end.
-pub(super) unsafe fn needed_text(name: &str, pointer: *const c_char) -> Result<String, Fault> {
+/// `pointer` is null or leads to a text with an end, which stays for `'a`: as long as the call of the host.
+pub(super) unsafe fn needed_text<'a>(name: &str, pointer: *const c_char) -> Result<&'a str, Fault> {
     // SAFETY: passed on.
     match unsafe { text(name, pointer) }? {
         Some(text) => Ok(text),
@@ -36,8 +38,11 @@ pub(super) unsafe fn needed_text(name: &str, pointer: *const c_char) -> Result<S
 /// Reads a text; none where the pointer is null.
 ///
 /// # Safety
-/// `pointer` is null or leads to a text with an end.
-pub(super) unsafe fn text(name: &str, pointer: *const c_char) -> Result<Option<String>, Fault> {
+/// As [`needed_text`].
+pub(super) unsafe fn text<'a>(
+    name: &str,
+    pointer: *const c_char,
+) -> Result<Option<&'a str>, Fault> {
     if pointer.is_null() {
         return Ok(None);
     }
@@ -49,7 +54,7 @@ pub(super) unsafe fn text(name: &str, pointer: *const c_char) -> Result<Option<S
         ));
     }
     match std::str::from_utf8(bytes) {
-        Ok(text) => Ok(Some(text.to_string())),
+        Ok(text) => Ok(Some(text)),
         Err(_) => bad(format!("`{name}` is not UTF-8 text")),
     }
 }
@@ -168,10 +173,10 @@ unsafe fn fill(
         let options = unsafe { sized("options", "limno_options", size_of::<usize>(), options) }?;
         // SAFETY: passed on, for each text.
         unsafe {
-            request.host_name = text("host_name", options.host_name)?.unwrap_or_default();
-            request.host_version = text("host_version", options.host_version)?.unwrap_or_default();
-            request.description = text("description", options.description)?.unwrap_or_default();
-            request.config.text = text("config_text", options.config_text)?;
+            request.host_name = owned(text("host_name", options.host_name)?);
+            request.host_version = owned(text("host_version", options.host_version)?);
+            request.description = owned(text("description", options.description)?);
+            request.config.text = text("config_text", options.config_text)?.map(str::to_string);
         }
         request.threads = match usize::try_from(options.threads) {
             Ok(threads) if threads <= 1024 => threads,
@@ -186,9 +191,13 @@ unsafe fn fill(
     // SAFETY: passed on.
     let (config, series) = unsafe { (text("config", config)?, text("series", series)?) };
     request.is_complete = (config.is_some() || request.config.text.is_some()) && series.is_some();
-    request.config.path = config.unwrap_or_else(|| "limnograph.toml".to_string());
-    request.series = series.unwrap_or_default();
+    request.config.path = config.unwrap_or("limnograph.toml").to_string();
+    request.series = owned(series);
     Ok(())
+}
+
+fn owned(text: Option<&str>) -> String {
+    text.unwrap_or_default().to_string()
 }
 
 fn version_text(version: u32) -> String {
@@ -250,7 +259,10 @@ pub(super) enum List {
 
 /// # Safety
 /// `array` is null or valid, and so is its list of arrays where it is read.
-pub(super) unsafe fn checked_array(array: *const Array, list: List) -> Result<Description, Fault> {
+pub(super) unsafe fn checked_array<'a>(
+    array: *const Array,
+    list: List,
+) -> Result<Description<'a>, Fault> {
     // SAFETY: passed on.
     let array = unsafe { sized("array", "limno_array", size_of::<Array>(), array) }?;
     let scalar = scalar_of(array.scalar)?;
@@ -268,9 +280,9 @@ pub(super) unsafe fn checked_array(array: *const Array, list: List) -> Result<De
     };
     let arrays = match list {
         _ if array.arrays.is_null() => None,
-        List::Ignored => Some(Vec::new()),
+        List::Ignored => Some(&[][..]),
         // The list may be as short as the field has components: it is refused without being read.
-        List::Read(Some(expected)) if expected != components => Some(vec![0; components]),
+        List::Read(Some(expected)) if expected != components => Some(&NO_ADDRESSES[..components]),
         // SAFETY: not null; that it holds one pointer per component is the caller's duty.
         List::Read(_) => Some(unsafe { listed(array.arrays, components) }?),
     };
@@ -287,21 +299,19 @@ pub(super) unsafe fn checked_array(array: *const Array, list: List) -> Result<De
     })
 }
 
-/// Reads a list of pointers.
+/// Views a list of pointers as addresses.
 ///
 /// # Safety
-/// `list` leads to so many pointers, aligned or not.
-pub(super) unsafe fn listed(
+/// `list` leads to so many pointers, aligned or not, that stay for `'a`: as long as the call of the host.
+pub(super) unsafe fn listed<'a>(
     list: *const *const c_void,
     components: usize,
-) -> Result<Vec<usize>, Fault> {
+) -> Result<&'a [usize], Fault> {
     if !list.is_aligned() {
         return bad("`arrays` is misaligned; give the address of an array of pointers".to_string());
     }
-    // SAFETY: aligned; the rest is the caller's duty.
-    Ok((0..components)
-        .map(|index| unsafe { *list.add(index) } as usize)
-        .collect())
+    // SAFETY: aligned, and a pointer has the size of an address; the rest is the caller's duty.
+    Ok(unsafe { std::slice::from_raw_parts(list.cast::<usize>(), components) })
 }
 
 /// # Safety
@@ -309,7 +319,7 @@ pub(super) unsafe fn listed(
 pub(super) unsafe fn checked_tally<'a>(
     batch: *const Tally,
     elements: usize,
-) -> Result<(String, TallyBatch<'a>), Fault> {
+) -> Result<(&'a str, TallyBatch<'a>), Fault> {
     // SAFETY: passed on.
     let batch = unsafe { sized("batch", "limno_tally_batch", 24, batch) }?;
     // SAFETY: passed on.
@@ -342,6 +352,13 @@ pub(super) unsafe fn checked_tally<'a>(
     if !batch.elements.is_null() && elements == 0 {
         return bad(format!(
             "tally on channel {channel}: `elements` is given, but the config names none under [elements]"
+        ));
+    }
+    if !batch.elements.is_null() && ![0, elements].contains(&batch.elements_each) {
+        return bad(format!(
+            "tally on channel {channel}: an event has {} numbers in `elements`, but the config names {elements} elements; \
+             `elements_each` must be {elements}, or 0 to take that for granted",
+            batch.elements_each
         ));
     }
     let checked = TallyBatch {

@@ -110,10 +110,12 @@ fn with_run(handle: *const LimnoRun, body: impl FnOnce(&Run) -> Result<(), Fault
         drop(asleep);
     }
     // Dropping the last reference may end threads: inside the guard as well.
-    let _ = guarded(|| {
-        drop(found);
-        Ok(())
-    });
+    if let Some(last) = found.and_then(Arc::into_inner) {
+        let _ = guarded(|| {
+            drop(last);
+            Ok(())
+        });
+    }
     status_of(result)
 }
 

@@ -81,12 +81,7 @@ pub unsafe extern "C" fn limno_open_communicator(
             request.fault.get_or_insert(fault);
             None
         });
-        registry::open_communicator(
-            request,
-            communicator,
-            communicator_bytes,
-            mpi.as_deref().unwrap_or(""),
-        )
+        registry::open_communicator(request, communicator, communicator_bytes, mpi.unwrap_or(""))
     })
 }
 
@@ -165,15 +160,7 @@ pub unsafe extern "C" fn limno_lend(
     stride: isize,
     scalar: i32,
 ) -> Status {
-    let array = Array {
-        size: size_of::<Array>(),
-        scalar,
-        components: 1,
-        data,
-        arrays: std::ptr::null(),
-        stride,
-        component_stride: 0,
-    };
+    let array = packed(1, data, stride, scalar);
     // SAFETY: passed on.
     unsafe { limno_lend_array(run, species, field, &raw const array, count) }
 }
@@ -193,15 +180,7 @@ pub unsafe extern "C" fn limno_lend_vector(
     stride: isize,
     scalar: i32,
 ) -> Status {
-    let array = Array {
-        size: size_of::<Array>(),
-        scalar,
-        components: 3,
-        data,
-        arrays: std::ptr::null(),
-        stride,
-        component_stride: 0,
-    };
+    let array = packed(3, data, stride, scalar);
     // SAFETY: passed on.
     unsafe { limno_lend_array(run, species, field, &raw const array, count) }
 }
@@ -224,13 +203,8 @@ pub unsafe extern "C" fn limno_lend_xyz(
 ) -> Status {
     let arrays = [x, y, z];
     let array = Array {
-        size: size_of::<Array>(),
-        scalar,
-        components: 3,
-        data: std::ptr::null(),
         arrays: arrays.as_ptr(),
-        stride,
-        component_stride: 0,
+        ..packed(3, std::ptr::null(), stride, scalar)
     };
     // SAFETY: passed on.
     unsafe { limno_lend_array(run, species, field, &raw const array, count) }
@@ -254,19 +228,16 @@ pub unsafe extern "C" fn limno_lend_array(
             unsafe { (needed_text("species", species), needed_text("field", field)) };
         let (species, field) = match (species, field) {
             (Ok(species), Ok(field)) => (species, field),
-            (species, Err(fault)) => return run.lend_unnamed(species.ok().as_deref(), fault),
+            (species, Err(fault)) => return run.lend_unnamed(species.ok(), fault),
             (Err(fault), _) => return run.lend_unnamed(None, fault),
         };
         // SAFETY: as above.
-        let array = unsafe { checked_array(array, List::Read(run.components_of(&field))) };
+        let array = unsafe { checked_array(array, List::Read(run.components_of(field))) };
         run.lend(
-            &species,
-            &field,
+            species,
+            field,
             count,
-            array
-                .as_ref()
-                .map(|array| (array.shape, array.lent()))
-                .map_err(Clone::clone),
+            array.map(|array| (array.shape, array.lent())),
         )
     })
 }
@@ -295,7 +266,7 @@ pub unsafe extern "C" fn limno_describe(
         };
         // Before anything is kept, so that a layout that nobody knows the number of is not.
         place_for("layout", layout)?;
-        let number = run.describe(&species, &field, array.shape, array.is_separate())?;
+        let number = run.describe(species, field, array.shape, array.is_separate())?;
         // SAFETY: as above.
         unsafe { write_out("layout", layout, number) }
     })
@@ -339,7 +310,7 @@ pub unsafe extern "C" fn limno_lend_again_arrays(
         // The list of a layout without arrays is not read; the layout is refused.
         // SAFETY: the host's duty, stated above: as many pointers as the layout has components.
         match unsafe { listed(arrays, components.unwrap_or(0)) } {
-            Ok(addresses) => run.lend_again(layout, count, Lent::Arrays(&addresses)),
+            Ok(addresses) => run.lend_again(layout, count, Lent::Arrays(addresses)),
             Err(fault) => run.lend_refused(layout, fault.text),
         }
     })
@@ -355,7 +326,7 @@ pub unsafe extern "C" fn limno_tally(run: *mut LimnoRun, batch: *const Tally) ->
     enter_run(run, |run| {
         // SAFETY: the host's duty, stated above. The elements' number is the run's own.
         let (channel, batch) = unsafe { checked_tally(batch, run.elements()) }?;
-        run.tally(&channel, &batch)
+        run.tally(channel, &batch)
     })
 }
 
@@ -370,21 +341,37 @@ pub unsafe extern "C" fn limno_sound(run: *mut LimnoRun, species: *const c_char)
     enter_run(run, |run| {
         // SAFETY: the host's duty, stated above.
         let species = unsafe { needed_text("species", species) }?;
-        run.sound(&species)
+        run.sound(species)
     })
 }
 
 /// The step is over: sounds what is still lent, lets go of every array, reduces, and enters the row in the log.
 /// Collective on steps that are due: every rank calls it, with the same step.
 ///
-/// Rows are completed up to two measured steps later, so that no rank waits for another; limno_close, and steps
-/// marked as checkpoint, complete all.
+/// Rows are completed up to two measured steps later, so that no rank waits for another; limno_close, limno_flush,
+/// and steps marked as checkpoint, complete all. What concerns all ranks alike, such as LIMNO_ASLEEP, is answered
+/// from the same step on by every rank: the second measured step after the one that it follows from, or at a flush.
 ///
 /// # Safety
 /// What was lent must still be readable.
 #[unsafe(no_mangle)]
 pub unsafe extern "C" fn limno_enter(run: *mut LimnoRun) -> Status {
     enter_run(run, |run| run.enter())
+}
+
+/// Completes the rows of all steps entered so far, where limno_enter would leave up to two of them for later.
+/// Collective: every rank calls it after the same limno_enter; waits until all have entered that step.
+///
+/// When it returns on rank 0 these rows are with the thread that writes them: if the disk takes them they are in
+/// the series within milliseconds, and then survive the end of the process. They are not yet safe from a power cut:
+/// for that, mark the step as checkpoint. Needed only by hosts that look at the series while they run, or that are
+/// about to do something from which they may not come back.
+///
+/// # Safety
+/// None beyond what the type says; any handle is answered.
+#[unsafe(no_mangle)]
+pub unsafe extern "C" fn limno_flush(run: *mut LimnoRun) -> Status {
+    enter_run(run, |run| run.flush())
 }
 
 /// Completes all rows, writes them, and ends the run. Collective. The handle is then closed: using it again is
@@ -439,6 +426,19 @@ pub unsafe extern "C" fn limno_how_it_stands(
     })
 }
 
+/// An array whose components, if it has several, stand next to each other.
+fn packed(components: u32, data: *const c_void, stride: isize, scalar: i32) -> Array {
+    Array {
+        size: size_of::<Array>(),
+        scalar,
+        components,
+        data,
+        arrays: std::ptr::null(),
+        stride,
+        component_stride: 0,
+    }
+}
+
 /// Which scalar type a number of the enumeration names.
 pub(super) fn scalar_of(number: i32) -> Result<crate::lend::Scalar, Fault> {
     use crate::lend::Scalar as Inner;
@@ -462,20 +462,21 @@ pub(super) fn scalar_of(number: i32) -> Result<crate::lend::Scalar, Fault> {
 }
 
 /// A checked description of an array, before its count is known.
-#[derive(Clone, Debug)]
-pub(super) struct Description {
+#[derive(Clone, Copy, Debug)]
+pub(super) struct Description<'a> {
     pub shape: ArrayShape,
     pub data: usize,
-    pub arrays: Option<Vec<usize>>,
+    /// Addresses of the components' arrays, where they are apart.
+    pub arrays: Option<&'a [usize]>,
 }
 
-impl Description {
+impl<'a> Description<'a> {
     pub fn is_separate(&self) -> bool {
         self.arrays.is_some()
     }
 
-    pub fn lent(&self) -> Lent<'_> {
-        match &self.arrays {
+    pub fn lent(&self) -> Lent<'a> {
+        match self.arrays {
             Some(addresses) => Lent::Arrays(addresses),
             None => Lent::Interleaved(self.data),
         }

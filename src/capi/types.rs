@@ -102,6 +102,9 @@ pub struct Tally {
     pub position: *const f64,
     /// The particle it happened to. Reserved: no gauge uses it yet.
     pub particle_id: *const u64,
+    /// How many numbers an event has in `elements`; 0: as many as the config names elements. Any other number
+    /// than that is an error, so that a host that counts otherwise is told before its arrays are read.
+    pub elements_each: usize,
 }
 
 /// What a host may say when it opens a run. NULL in its place, or a zero in a member, means the default.

@@ -41,6 +41,16 @@ pub struct Moment {
     pub ln_a: f64,
 }
 
+/// A moment whose age is computed only where it is wanted: that is most of the work.
+#[derive(Clone, Copy, Debug)]
+struct Place {
+    scale_factor: f64,
+    redshift: f64,
+    /// Where it follows without the cosmology.
+    age_seconds: Option<f64>,
+    ln_a: f64,
+}
+
 /// Why a time means nothing.
 #[derive(Clone, Debug, PartialEq, Eq)]
 pub struct ClockError {
@@ -97,7 +107,7 @@ impl Clockwork {
     /// # Errors
     /// As for [`Clockwork::moment`].
     pub fn elapsed_seconds(&self, from: f64, to: f64) -> Result<f64, ClockError> {
-        let (start, end) = (self.moment(from)?, self.moment(to)?);
+        let (start, end) = (self.place(from)?, self.place(to)?);
         Ok(match (&self.expansion, self.coordinate) {
             (
                 Expansion::Expanding(cosmology),
@@ -130,7 +140,7 @@ impl Clockwork {
 
     /// A clock time in the coordinate of births; the very same number where the two coordinates agree.
     fn as_birth(&self, time: f64) -> Result<f64, ClockError> {
-        let moment = self.moment(time)?;
+        let place = self.place(time)?;
         if self.birth == self.coordinate {
             let same_unit =
                 self.birth != Coordinate::Time || self.birth_unit_seconds == self.unit_seconds;
@@ -141,10 +151,10 @@ impl Clockwork {
             });
         }
         Ok(match self.birth {
-            Coordinate::ScaleFactor => moment.scale_factor,
-            Coordinate::LogScaleFactor => moment.ln_a,
-            Coordinate::Redshift => moment.redshift,
-            Coordinate::Time => moment.age_seconds / self.birth_unit_seconds,
+            Coordinate::ScaleFactor => place.scale_factor,
+            Coordinate::LogScaleFactor => place.ln_a,
+            Coordinate::Redshift => place.redshift,
+            Coordinate::Time => self.age(place) / self.birth_unit_seconds,
         })
     }
 
@@ -154,6 +164,32 @@ impl Clockwork {
         coordinate: Coordinate,
         unit_seconds: f64,
     ) -> Result<Moment, ClockError> {
+        let place = self.find(value, coordinate, unit_seconds)?;
+        Ok(Moment {
+            scale_factor: place.scale_factor,
+            redshift: place.redshift,
+            age_seconds: self.age(place),
+            ln_a: place.ln_a,
+        })
+    }
+
+    fn age(&self, place: Place) -> f64 {
+        match (place.age_seconds, &self.expansion) {
+            (None, Expansion::Expanding(cosmology)) => cosmology.age(place.scale_factor),
+            (age_seconds, _) => age_seconds.unwrap_or_default(),
+        }
+    }
+
+    fn place(&self, time: f64) -> Result<Place, ClockError> {
+        self.find(time, self.coordinate, self.unit_seconds)
+    }
+
+    fn find(
+        &self,
+        value: f64,
+        coordinate: Coordinate,
+        unit_seconds: f64,
+    ) -> Result<Place, ClockError> {
         if !value.is_finite() {
             return Err(ClockError {
                 message: format!("found the time {value}; expected a finite number"),
@@ -161,10 +197,10 @@ impl Clockwork {
         }
         let Expansion::Expanding(cosmology) = &self.expansion else {
             let age_seconds = value * unit_seconds;
-            return Ok(Moment {
+            return Ok(Place {
                 scale_factor: 1.0,
                 redshift: 0.0,
-                age_seconds,
+                age_seconds: Some(age_seconds),
                 ln_a: 0.0,
             });
         };
@@ -178,33 +214,29 @@ impl Clockwork {
         };
         let in_range = |a: f64| a > 0.0 && a <= largest;
         match coordinate {
-            Coordinate::ScaleFactor if in_range(value) => Ok(Moment {
+            Coordinate::ScaleFactor if in_range(value) => Ok(Place {
                 scale_factor: value,
                 redshift: 1.0 / value - 1.0,
-                age_seconds: cosmology.age(value),
+                age_seconds: None,
                 ln_a: value.ln(),
             }),
-            Coordinate::LogScaleFactor if in_range(value.exp()) => Ok(Moment {
+            Coordinate::LogScaleFactor if in_range(value.exp()) => Ok(Place {
                 scale_factor: value.exp(),
                 redshift: (-value).exp_m1(),
-                age_seconds: cosmology.age(value.exp()),
+                age_seconds: None,
                 ln_a: value,
             }),
-            Coordinate::Redshift if in_range(1.0 / (1.0 + value)) => {
-                let scale_factor = 1.0 / (1.0 + value);
-                let age_seconds = cosmology.age(scale_factor);
-                Ok(Moment {
-                    scale_factor,
-                    redshift: value,
-                    age_seconds,
-                    ln_a: -value.ln_1p(),
-                })
-            }
+            Coordinate::Redshift if in_range(1.0 / (1.0 + value)) => Ok(Place {
+                scale_factor: 1.0 / (1.0 + value),
+                redshift: value,
+                age_seconds: None,
+                ln_a: -value.ln_1p(),
+            }),
             Coordinate::Time => match cosmology.scale_factor(value * unit_seconds) {
-                Some(scale_factor) => Ok(Moment {
+                Some(scale_factor) => Ok(Place {
                     scale_factor,
                     redshift: 1.0 / scale_factor - 1.0,
-                    age_seconds: value * unit_seconds,
+                    age_seconds: Some(value * unit_seconds),
                     ln_a: scale_factor.ln(),
                 }),
                 None => {

@@ -121,12 +121,12 @@ impl Gauge for BlackHoles {
 
     fn enter(&mut self, reading: &Reading, moment: &Moment, entry: &mut Entry) {
         if !reading.is_measured(Species::BlackHole) {
-            return (0..8).for_each(|_| entry.put(Value::Null));
+            return;
         }
         let mass = reading.sum(self.sums, MASS) * moment.factors.mass;
         let rate = reading.sum(self.sums, RATE) * moment.factors.accretion_rate;
         if moment.volume.is_none() {
-            entry.notes.push(super::NO_VOLUME);
+            entry.note(super::NO_VOLUME);
         }
         let per_volume = |value: f64| moment.volume.map(|volume| value / volume);
         let eddington = eddington_rate(mass, self.efficiency);

@@ -21,7 +21,12 @@ struct MassBudget {
 /// The first row's baryons, in host units, exactly.
 struct First {
     total: Total,
-    species: Vec<Species>,
+    /// Those of which it is made, one bit each.
+    species: u64,
+}
+
+fn bit(species: Species) -> u64 {
+    1 << species as u64
 }
 
 fn is_baryonic(species: Species) -> bool {
@@ -70,24 +75,15 @@ impl Gauge for MassBudget {
             .add_slice(block.scalar(Field::Mass));
     }
 
-    fn carry(&self) -> Vec<u64> {
-        self.first.as_ref().map_or_else(Vec::new, |first| {
-            let present = first
-                .species
-                .iter()
-                .fold(0, |bits, species| bits | 1 << *species as u64);
-            std::iter::once(present)
-                .chain(first.total.cells().iter().copied())
-                .collect()
-        })
+    fn carry(&self, into: &mut Vec<u64>) {
+        if let Some(first) = &self.first {
+            into.push(first.species);
+            into.extend_from_slice(first.total.cells());
+        }
     }
 
     fn take_up(&mut self, words: &[u64], _is_last_row: bool) {
-        if let Some((present, cells)) = words.split_first() {
-            let is_present = |(species, _): (Species, &str)| {
-                (present >> species as u64 & 1 == 1).then_some(species)
-            };
-            let species = SPECIES.into_iter().filter_map(is_present).collect();
+        if let Some((&species, cells)) = words.split_first() {
             self.first = Some(First {
                 total: Total::from_cells(cells),
                 species,
@@ -98,7 +94,7 @@ impl Gauge for MassBudget {
     fn enter(&mut self, reading: &Reading, moment: &Moment, entry: &mut Entry) {
         let to_solar = moment.factors.mass / SOLAR_MASS;
         let mut total = Total::default();
-        let mut present = Vec::new();
+        let mut present = 0;
         let mut known = true;
         for (species, _) in SPECIES {
             let presence = reading.presence(species);
@@ -108,16 +104,13 @@ impl Gauge for MassBudget {
                 known &= measured || presence == Presence::NotLent;
                 if measured {
                     total += &reading.reduced.sum(self.masses, species as usize);
-                    present.push(species);
+                    present |= bit(species);
                 }
             }
         }
-        known &= !present.is_empty();
+        known &= present != 0;
         if let Some(first) = &self.first {
-            known &= first
-                .species
-                .iter()
-                .all(|species| present.contains(species));
+            known &= first.species & !present == 0;
         }
         entry.put(known.then(|| total.to_f64() * to_solar));
         if known && self.first.is_none() {

@@ -24,7 +24,7 @@ pub use tallies::{Channel, TallyBatch, TallyBook};
 
 use crate::config::{Config, Problem, Section};
 use crate::lend::{Field, Species};
-use crate::series::record::{Row, Value};
+use crate::series::record::{Rows, Value};
 use crate::sweep::{Block, Work};
 
 /// One diagnostic.
@@ -45,10 +45,8 @@ pub trait Gauge: Send + Sync {
     /// Adds what this rank has tallied since the last row; most gauges have no use for tallies.
     fn take_tallies(&self, _book: &TallyBook, _sample: &mut Sample) {}
 
-    /// What the gauge must remember to go on exactly after a restart; stored at checkpoints.
-    fn carry(&self) -> Vec<u64> {
-        Vec::new()
-    }
+    /// Appends what the gauge must remember to go on exactly after a restart; stored at checkpoints.
+    fn carry(&self, _into: &mut Vec<u64>) {}
 
     /// Takes up what `carry` left in an earlier leg; `is_last_row` when that was the very row before the one
     /// that comes now. Words that make no sense are ignored.
@@ -188,23 +186,57 @@ impl Reading<'_> {
     }
 }
 
-/// Where a gauge puts what it has to say about a row.
-#[derive(Debug, Default)]
-pub struct Entry {
-    /// One value per column of the run table that the gauge owns.
-    pub run: Vec<Value>,
-    /// Rows of the gauge's own tables.
-    pub rows: Vec<Row>,
-    /// Why something is null that was lent; each text is written down as an event once.
-    pub notes: Vec<&'static str>,
+/// Where a gauge puts what it has to say about a row: straight into the record of the step.
+#[derive(Debug)]
+pub struct Entry<'a> {
+    rows: &'a mut Rows,
+    /// The gauge's next column of the run table, and the one after its last.
+    columns: std::ops::Range<usize>,
+    notes: &'a mut Vec<&'static str>,
 }
 
 /// The note of every gauge that has densities, where there is no volume.
 pub(crate) const NO_VOLUME: &str = "the config states no volume, so densities are null";
 
-impl Entry {
-    /// The next of the gauge's columns.
+impl<'a> Entry<'a> {
+    /// The entry of a gauge that owns these columns of the run table, whose row is the first of `rows`.
+    pub(crate) fn new(
+        rows: &'a mut Rows,
+        columns: std::ops::Range<usize>,
+        notes: &'a mut Vec<&'static str>,
+    ) -> Entry<'a> {
+        Entry {
+            rows,
+            columns,
+            notes,
+        }
+    }
+
+    /// The next of the gauge's columns of the run table. Columns that get no value are null.
     pub fn put(&mut self, value: impl Into<Value>) {
-        self.run.push(value.into());
+        if let Some(column) = self.columns.next() {
+            self.rows.set_in_first(column, value.into());
+        }
+    }
+
+    /// Begins a row of one of the gauge's own tables.
+    pub fn row(&mut self, table: TableHandle) {
+        self.rows.begin(table.0);
+    }
+
+    /// The next value of the row begun last.
+    #[inline]
+    pub fn cell(&mut self, value: impl Into<Value>) {
+        self.rows.put(value);
+    }
+
+    /// So many nulls in the row begun last.
+    pub fn null_cells(&mut self, count: usize) {
+        self.rows.put_nulls(count);
+    }
+
+    /// Says why something is null that was lent; each text is written down as an event once.
+    pub fn note(&mut self, note: &'static str) {
+        self.notes.push(note);
     }
 }

@@ -11,7 +11,6 @@ use super::plan::{Counts, Plan, Sums};
 use super::{Entry, Gauge, Moment, Presence, Reading, Sample};
 use crate::config::{Config, Section};
 use crate::lend::{Field, Species};
-use crate::series::record::Value;
 use crate::series::schema::{Kind, ValueType};
 use crate::sweep::{Block, Work};
 use crate::units::constants::{SOLAR_MASS, YEAR};
@@ -112,8 +111,8 @@ impl Gauge for StarFormation {
         }
     }
 
-    fn carry(&self) -> Vec<u64> {
-        self.last_rate.map(f64::to_bits).into_iter().collect()
+    fn carry(&self, into: &mut Vec<u64>) {
+        into.extend(self.last_rate.map(f64::to_bits));
     }
 
     fn take_up(&mut self, words: &[u64], is_last_row: bool) {
@@ -125,7 +124,7 @@ impl Gauge for StarFormation {
 
     fn enter(&mut self, reading: &Reading, moment: &Moment, entry: &mut Entry) {
         if moment.volume.is_none() {
-            entry.notes.push(super::NO_VOLUME);
+            entry.note(super::NO_VOLUME);
         }
         let rate = reading
             .is_measured(Species::Gas)
@@ -137,22 +136,19 @@ impl Gauge for StarFormation {
                 .map(|(rate, volume)| rate * to_yearly / volume),
         );
         let stars = reading.presence(Species::Star) == Presence::Measured;
-        match moment.interval.filter(|_| stars) {
-            Some(interval) => {
-                let formed = reading.sum(self.formed, 0) * moment.factors.mass;
-                let expected = self
-                    .last_rate
-                    .zip(rate)
-                    .map(|(last, now)| 0.5 * (last + now) * interval.seconds)
-                    .filter(|expected| *expected > 0.0);
-                entry.put(formed / SOLAR_MASS);
-                entry.put(reading.reduced.count(self.born, 0));
-                entry.put(
-                    Some(formed / interval.seconds * to_yearly).filter(|_| interval.seconds > 0.0),
-                );
-                entry.put(expected.map(|expected| formed / expected));
-            }
-            None => (0..4).for_each(|_| entry.put(Value::Null)),
+        if let Some(interval) = moment.interval.filter(|_| stars) {
+            let formed = reading.sum(self.formed, 0) * moment.factors.mass;
+            let expected = self
+                .last_rate
+                .zip(rate)
+                .map(|(last, now)| 0.5 * (last + now) * interval.seconds)
+                .filter(|expected| *expected > 0.0);
+            entry.put(formed / SOLAR_MASS);
+            entry.put(reading.reduced.count(self.born, 0));
+            entry.put(
+                Some(formed / interval.seconds * to_yearly).filter(|_| interval.seconds > 0.0),
+            );
+            entry.put(expected.map(|expected| formed / expected));
         }
         self.last_rate = rate;
     }

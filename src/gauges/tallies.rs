@@ -149,7 +149,11 @@ impl TallyBook {
 
     /// Forgets everything.
     pub fn clear(&mut self) {
-        for channel in &mut self.channels {
+        for channel in self
+            .channels
+            .iter_mut()
+            .filter(|channel| channel.events > 0)
+        {
             channel.events = 0;
             channel
                 .amounts
@@ -217,7 +221,8 @@ impl Gauge for Tallies {
     }
 
     fn take_tallies(&self, book: &TallyBook, sample: &mut Sample) {
-        for (channel, &(events, sums)) in book.channels.iter().zip(&self.channels) {
+        let channels = book.channels.iter().zip(&self.channels);
+        for (channel, &(events, sums)) in channels.filter(|(channel, _)| channel.events > 0) {
             *sample.count(events, 0) += channel.events;
             for (index, amount) in channel.amounts.iter().chain(&channel.elements).enumerate() {
                 sample.sum(sums, index).merge(amount);

@@ -7,10 +7,8 @@
 mod convert;
 mod fields;
 mod lot;
-mod nearest;
 mod view;
 
 pub use fields::{FIELDS, Field, FieldInfo, Quantity, SPECIES, Shape, Species};
 pub use lot::Lot;
-pub use nearest::nearest;
 pub use view::{ArrayShape, Lent, Scalar, View, ViewError};

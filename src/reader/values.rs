@@ -112,7 +112,7 @@ impl ColumnValues {
             ColumnValues::Float(values) => values.get(row).copied().map(Value::Float),
             ColumnValues::Integer(values) => values.get(row).copied().map(Value::Integer),
             ColumnValues::Unsigned(values) => values.get(row).copied().map(Value::Unsigned),
-            ColumnValues::Text(values) => values.get(row).cloned().map(Value::Text),
+            ColumnValues::Text(values) => values.get(row).map(|text| Value::from(text.as_str())),
             ColumnValues::Floats(values) => values.get(row).cloned().map(Value::Floats),
             ColumnValues::Counts(values) => values.get(row).cloned().map(Value::Counts),
         };

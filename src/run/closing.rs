@@ -39,6 +39,7 @@ impl Core {
         }
         let _ = self.sleeps.set(why.clone());
         self.let_go();
+        self.verdicts.clear();
         self.asleep = Some(why);
         fault
     }
@@ -90,6 +91,10 @@ impl Core {
         if self.team.size() == 1 {
             return self.flush(CLOSE_PATIENCE);
         }
+        let verdict = self.verdicts.drain(..).flatten().next();
+        if let Some(why) = verdict {
+            self.fall_asleep(why);
+        }
         for _ in 0..CLOSE_ROUNDS {
             while self.flights.len() >= IN_FLIGHT {
                 self.absorb_while_closing()?;
@@ -103,6 +108,7 @@ impl Core {
                     ticket,
                     context: Context { moment: None },
                     doubt: None,
+                    is_sure: true,
                 }),
                 Err(error) => return Err(self.lose_team(&error, CLOSE_PATIENCE)),
             }

@@ -74,6 +74,18 @@ const TIMED: usize = 5;
 const WITHOUT_INTERVAL: usize = 6;
 const LEFT_OUT: usize = 7;
 const RANK_CELLS: usize = 8;
+const COST_CELLS: usize = 3;
+
+/// What a rank's part has cost since its last contribution, in ns; the row tells the largest of all ranks.
+#[derive(Clone, Copy, Debug, Default, PartialEq)]
+pub struct CostWords {
+    /// Time on steps, the library's included.
+    pub host: u64,
+    /// Time inside calls of the library.
+    pub library: u64,
+    /// Time spent waiting for the oldest reduction because a third would have been in flight.
+    pub waiting: u64,
+}
 
 impl Words {
     /// The words of the gauges of a plan.
@@ -94,7 +106,7 @@ impl Words {
         let ranks = layout.add(Kind::Sum, 1, RANK_CELLS);
         let clock = layout.add(Kind::Max, 1, 4);
         let host = layout.add(Kind::Max, 1, 3);
-        let cost = layout.add(Kind::Max, 1, 2);
+        let cost = layout.add(Kind::Max, 1, COST_CELLS);
         let needs = layout.add(
             Kind::Sum,
             1,
@@ -150,9 +162,10 @@ impl Words {
         ]);
     }
 
-    /// Says what the library and the host's steps have cost this rank since its last row, in ns.
-    pub fn put_cost(&self, buffer: &mut [u64], library: u64, host: u64) {
-        buffer[self.layout.range(self.cost)].copy_from_slice(&[library, host]);
+    /// Says what the library and the host's steps have cost this rank.
+    pub fn put_cost(&self, buffer: &mut [u64], words: CostWords) {
+        let cells = [words.host, words.library, words.waiting];
+        buffer[self.layout.range(self.cost)].copy_from_slice(&cells);
     }
 
     /// Says what became of the needs of every gauge.
@@ -196,7 +209,6 @@ impl Words {
         let clock = &buffer[self.layout.range(self.clock)];
         let host = &buffer[self.layout.range(self.host)];
         let cost = &buffer[self.layout.range(self.cost)];
-        let needs = &buffer[self.layout.range(self.needs)];
         let text = &buffer[self.layout.range(self.text)];
         let range = |high: u64, low: u64| (high != 0).then_some((!low, high));
         Combined {
@@ -212,19 +224,28 @@ impl Words {
                 checkpoint: host[1] != 0,
                 step_length: f64::from_bits(host[2]),
             },
-            library_nanoseconds: cost[0],
-            host_nanoseconds: cost[1],
-            needs: needs
-                .chunks_exact(3)
-                .map(|cells| NeedState {
-                    soundings: cells[0],
-                    with: cells[1],
-                    without: cells[2],
-                })
-                .collect(),
-            not_finite: buffer[self.layout.range(self.not_finite)].to_vec(),
+            cost: CostWords {
+                host: cost[0],
+                library: cost[1],
+                waiting: cost[2],
+            },
             said: read_text(text),
         }
+    }
+
+    /// What became of each need over all ranks, gauge by gauge.
+    pub fn needs<'a>(&self, buffer: &'a [u64]) -> impl Iterator<Item = NeedState> + use<'a> {
+        let cells = &buffer[self.layout.range(self.needs)];
+        cells.chunks_exact(3).map(|cells| NeedState {
+            soundings: cells[0],
+            with: cells[1],
+            without: cells[2],
+        })
+    }
+
+    /// Elements with numbers that are not finite on all ranks, by checked field.
+    pub fn not_finite<'a>(&self, buffer: &'a [u64]) -> &'a [u64] {
+        &buffer[self.layout.range(self.not_finite)]
     }
 }
 
@@ -272,14 +293,8 @@ pub struct Combined {
     pub times: Option<(f64, f64)>,
     /// What the host said, of all ranks the largest.
     pub host: HostWords,
-    /// Largest time spent in the library since the last row.
-    pub library_nanoseconds: u64,
-    /// Largest time spent on steps since the last row, the library's included.
-    pub host_nanoseconds: u64,
-    /// What became of each need.
-    pub needs: Vec<NeedState>,
-    /// Elements with numbers that are not finite, by checked field.
-    pub not_finite: Vec<u64>,
+    /// What it has cost, of all ranks the largest.
+    pub cost: CostWords,
     /// What the lowest rank with something to say says.
     pub said: Option<Said>,
 }

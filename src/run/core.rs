@@ -120,6 +120,8 @@ pub(super) struct Core {
     pub(super) last_tick: Option<Tick>,
     /// Contributions that have been started and not yet taken in.
     pub(super) flights: VecDeque<Flight>,
+    /// Of reductions that have been taken in and not yet acted upon: must all ranks sleep, and why?
+    pub(super) verdicts: VecDeque<Option<String>>,
     /// Steps to which contributions in doubt turned out to belong.
     pub(super) stood_in: Vec<u64>,
     pub(super) spare: Vec<Vec<u64>>,
@@ -136,6 +138,8 @@ pub(super) struct Core {
     /// Time in the library since the last contribution, and when that was.
     pub(super) spent: u64,
     pub(super) since: Instant,
+    /// Time spent waiting for reductions since the last contribution, in ns.
+    pub(super) waited: u64,
 }
 
 impl Core {
@@ -171,6 +175,7 @@ impl Core {
             last_row: None,
             last_tick: None,
             flights: VecDeque::new(),
+            verdicts: VecDeque::new(),
             stood_in: Vec::new(),
             spare: Vec::new(),
             trouble: None,
@@ -182,6 +187,7 @@ impl Core {
             rows: 0,
             spent: 0,
             since: Instant::now(),
+            waited: 0,
         }
     }
 
@@ -255,25 +261,24 @@ impl Core {
     }
 
     fn check_shape(&self, species: Species, field: Field, shape: ArrayShape) -> Result<(), Fault> {
-        let name = format!("{} {}", species.name(), field.name());
+        let wrong = |text: String| {
+            let name = format!("{} {}", species.name(), field.name());
+            Fault::err(Status::BadArgument, format!("{name}: {text}"))
+        };
         let components = field.components(self.config.elements.len());
         if components == 0 {
-            let text =
-                format!("{name}: the config names no elements; list them under [elements] names");
-            return Fault::err(Status::BadArgument, text);
+            let text = "the config names no elements; list them under [elements] names";
+            return wrong(text.to_string());
         }
         if shape.components != components {
-            let text = format!(
-                "{name}: lent with {} numbers an element, expected {components}",
-                shape.components
-            );
-            return Fault::err(Status::BadArgument, text);
+            let numbers = shape.components;
+            return wrong(format!(
+                "lent with {numbers} numbers an element, expected {components}"
+            ));
         }
         if field.info().shape == Shape::Identity && !shape.scalar.is_integer() {
-            let text = format!(
-                "{name}: identities must be integers (LIMNO_I32, LIMNO_U32, LIMNO_I64 or LIMNO_U64)"
-            );
-            return Fault::err(Status::BadArgument, text);
+            let text = "identities must be integers (LIMNO_I32, LIMNO_U32, LIMNO_I64 or LIMNO_U64)";
+            return wrong(text.to_string());
         }
         Ok(())
     }
@@ -383,7 +388,9 @@ impl Core {
                 .sound(species, lot, &mut self.gauges, &self.plan, moment);
             self.sounded[species as usize] = true;
         }
-        lot.let_go();
+        if lot.is_touched() {
+            lot.let_go();
+        }
         Ok(())
     }
 
@@ -402,7 +409,10 @@ impl Core {
 
     /// Lets go of every array: nothing lent outlives its step.
     pub(super) fn let_go(&mut self) {
-        self.lots.iter_mut().for_each(Lot::let_go);
+        // Most have been let go of already, and emptying one is a kilobyte of work.
+        for lot in self.lots.iter_mut().filter(|lot| lot.is_touched()) {
+            lot.let_go();
+        }
         self.sounded = Default::default();
         self.misnamed = false;
     }

@@ -5,13 +5,17 @@
 //! doubt: its part stands for whichever step the others contribute to. Before its next part it waits to learn
 //! which step that was: the others come to that step without waiting for this rank. If one of them does not,
 //! because its own host has gone astray, the wait is given up after a while and the next part is in doubt too.
+//!
+//! What follows from a reduction for all ranks alike, such as that they sleep, follows at the same step on all of
+//! them, however early some may see it complete: when the part for the second step after it is given, or at a
+//! flush. Until then it is kept as a verdict; the rows themselves are handed on as soon as they are complete.
 
 use super::clock::Clock;
-use super::contribution::{Combined, Condition, HostWords, StepWords};
+use super::contribution::{Combined, Condition, CostWords, HostWords, StepWords};
 use super::core::{Core, Stage};
 use super::lock;
 use super::marking::Refused;
-use super::rows::{Context, Scribe};
+use super::rows::{Context, Made, Scribe};
 use super::status::{Fault, Status};
 use crate::config::Tick;
 use crate::gauges::{Moment, TallyBook};
@@ -33,6 +37,8 @@ pub(super) struct Flight {
     pub context: Context,
     /// Set when this rank was in error: what it handed over, to be taken back if no row comes of it.
     pub doubt: Option<Doubt>,
+    /// Are the other ranks known to take part without anything further from this one?
+    pub is_sure: bool,
 }
 
 /// What a rank in error has handed over with its contribution.
@@ -314,9 +320,14 @@ impl Core {
             moment,
         } = contribution;
         let is_in_error = moment.is_none();
+        // What was waited for before, so that it is part of the time in calls that the row tells.
+        let waiting = std::mem::take(&mut self.waited);
         // A rank in error waits for nobody: the step that it would wait for may never come.
-        while !is_in_error && self.flights.len() >= IN_FLIGHT {
-            self.absorb_oldest(STEP_PATIENCE)?;
+        while self.undecided() >= IN_FLIGHT && !(is_in_error && self.verdicts.is_empty()) {
+            let start = self.verdicts.is_empty().then(Instant::now);
+            let result = self.conclude_oldest(STEP_PATIENCE);
+            self.waited += start.map_or(0, |start| start.elapsed().as_nanos() as u64);
+            result?;
         }
         let condition = if self.asleep_alone.is_some() {
             Condition::Asleep
@@ -344,10 +355,16 @@ impl Core {
             words.put_step(&mut buffer, step);
         }
         words.put_host(&mut buffer, host);
-        let since = self.since.elapsed().as_nanos() as u64;
-        words.put_cost(&mut buffer, self.spent.min(since), since);
-        self.spent = 0;
-        self.since = Instant::now();
+        let now = Instant::now();
+        let host = (now - self.since).as_nanos() as u64;
+        let library = std::mem::take(&mut self.spent).min(host);
+        let cost = CostWords {
+            host,
+            library,
+            waiting: waiting.min(library),
+        };
+        words.put_cost(&mut buffer, cost);
+        self.since = now;
         words.put_needs(&mut buffer, &self.sweep.needs);
         self.sweep.each_worker(|worker| {
             words.add_not_finite(&mut buffer, &worker.not_finite);
@@ -368,6 +385,7 @@ impl Core {
                     ticket,
                     context: Context { moment },
                     doubt,
+                    is_sure: condition != Condition::InDoubt,
                 });
                 Ok(())
             }
@@ -387,26 +405,41 @@ impl Core {
     /// was in vain.
     fn settle_doubts(&mut self, it_matters: impl Fn(&Core) -> bool) -> Result<bool, Fault> {
         let until = Instant::now() + DOUBT_PATIENCE;
-        while self.is_in_doubt() && it_matters(self) {
+        while self.is_in_doubt() && !self.will_sleep() && it_matters(self) {
             let left = until.saturating_duration_since(Instant::now());
-            match self.receive_oldest(left, Overdue::IsNoFault)? {
-                Some(received) => self.conclude(received)?,
-                None => return Ok(false),
+            if !self.take_in_oldest(left, Overdue::IsNoFault)? {
+                return Ok(false);
             }
         }
         Ok(true)
     }
 
-    /// Takes in what has completed, without waiting.
+    /// Reductions of which this rank has not yet drawn the conclusions.
+    fn undecided(&self) -> usize {
+        self.flights.len() + self.verdicts.len()
+    }
+
+    /// Is it known that all ranks will sleep? Nothing further becomes a row then.
+    fn will_sleep(&self) -> bool {
+        self.verdicts.back().is_some_and(Option::is_some)
+    }
+
+    /// Takes in what has completed, without waiting and without drawing conclusions.
     pub(super) fn poll(&mut self) {
-        while let Some(flight) = self.flights.front() {
+        while self.asleep.is_none() && !self.will_sleep() {
+            let Some(flight) = self.flights.front() else {
+                return;
+            };
             match self.team.is_complete(flight.ticket) {
-                Ok(true) if self.asleep.is_none() => {
-                    if self.absorb_oldest(STEP_PATIENCE).is_err() {
+                Ok(true) => {
+                    if self
+                        .take_in_oldest(STEP_PATIENCE, Overdue::IsAFault)
+                        .is_err()
+                    {
                         return;
                     }
                 }
-                Ok(_) => return,
+                Ok(false) => return,
                 Err(error) => {
                     self.lose_team(&error, STEP_PATIENCE);
                     return;
@@ -415,34 +448,55 @@ impl Core {
         }
     }
 
+    /// Completes what is in flight and draws all conclusions.
     pub(super) fn flush(&mut self, patience: Duration) -> Result<(), Fault> {
-        while !self.flights.is_empty() {
-            self.absorb_oldest(patience)?;
+        while self.undecided() > 0 {
+            self.conclude_oldest(patience)?;
         }
         Ok(())
     }
 
-    /// Waits for the oldest reduction and draws the conclusions, which are the same on every rank.
-    fn absorb_oldest(&mut self, patience: Duration) -> Result<(), Fault> {
-        match self.receive_oldest(patience, Overdue::IsAFault)? {
-            Some(received) => self.conclude(received),
-            None => Ok(()),
+    /// As `flush`, but does not wait for what depends on further calls of this rank's host or of others'.
+    pub fn flush_what_is_sure(&mut self) -> Result<(), Fault> {
+        while self.undecided() > 0 {
+            let is_doubtful = self.verdicts.is_empty()
+                && self.flights.front().is_some_and(|flight| !flight.is_sure);
+            if is_doubtful && !self.take_in_oldest(Duration::ZERO, Overdue::IsNoFault)? {
+                break;
+            }
+            self.conclude_oldest(STEP_PATIENCE)?;
         }
+        self.awake()?;
+        self.scribe.as_mut().map_or(Ok(()), Scribe::complain_once)
     }
 
-    fn conclude(&mut self, received: Received) -> Result<(), Fault> {
+    /// Waits for the oldest reduction and makes a row of it; `false` when there is none, or not in time.
+    fn take_in_oldest(&mut self, patience: Duration, overdue: Overdue) -> Result<bool, Fault> {
+        let Some(received) = self.receive_oldest(patience, overdue)? else {
+            return Ok(false);
+        };
         let Received {
             combined,
             flight,
             buffer,
         } = received;
-        match combined.reason_to_sleep() {
+        let verdict = combined.reason_to_sleep();
+        if verdict.is_none() {
+            self.take_in(&combined, flight, &buffer);
+        }
+        self.spare.push(buffer);
+        self.verdicts.push_back(verdict);
+        Ok(true)
+    }
+
+    /// Draws the conclusions of the oldest reduction, which are the same on every rank; waits for it if need be.
+    fn conclude_oldest(&mut self, patience: Duration) -> Result<(), Fault> {
+        if self.verdicts.is_empty() {
+            self.take_in_oldest(patience, Overdue::IsAFault)?;
+        }
+        match self.verdicts.pop_front().flatten() {
             Some(why) => Err(self.fall_asleep(why)),
-            None => {
-                self.take_in(&combined, flight, &buffer);
-                self.spare.push(buffer);
-                Ok(())
-            }
+            None => Ok(()),
         }
     }
 
@@ -489,15 +543,15 @@ impl Core {
             self.learn(combined);
         }
         if let Some(scribe) = &mut self.scribe {
-            let reduced = self.words.packing.reduced(&self.words.layout, buffer);
-            scribe.write(
-                &self.config,
-                &self.plan,
-                &mut self.gauges,
-                &flight.context,
+            let made = Made {
+                config: &self.config,
+                plan: &self.plan,
+                words: &self.words,
+                context: &flight.context,
                 combined,
-                reduced,
-            );
+                buffer,
+            };
+            scribe.write(made, &mut self.gauges);
         }
     }
 

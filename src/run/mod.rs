@@ -21,7 +21,8 @@ pub use status::{Fault, Status};
 
 use self::core::{Core, Missed};
 use crate::gauges::{TallyBatch, TallyBook};
-use crate::lend::{ArrayShape, Field, Lent, SPECIES, Species, nearest};
+use crate::lend::{ArrayShape, Field, Lent, SPECIES, Species};
+use crate::units::nearest::{either, nearest};
 use std::sync::atomic::{AtomicU64, Ordering};
 use std::sync::{Arc, Mutex, MutexGuard, OnceLock, PoisonError};
 use std::time::Instant;
@@ -274,6 +275,14 @@ impl Run {
         self.call_together(Core::enter)
     }
 
+    /// Completes all rows that have been entered and hands them to the writer.
+    ///
+    /// # Errors
+    /// A run that sleeps, or falls asleep by what these rows tell; a disk that begins to refuse rows.
+    pub fn flush(&self) -> Result<(), Fault> {
+        self.call_together(Core::flush_what_is_sure)
+    }
+
     /// Completes all rows and ends the run.
     ///
     /// # Errors
@@ -315,12 +324,17 @@ fn unknown<'a>(
     known: impl Iterator<Item = &'a str> + Clone,
     note: &str,
 ) -> Fault {
-    let hint = match nearest(given, known.clone()) {
-        Some(name) => format!("did you mean {name:?}?"),
-        None => format!("known: {}", known.collect::<Vec<_>>().join(", ")),
-    };
     // A text that does not seem to end is none that a person wants to read in full.
     let end = given.floor_char_boundary(64);
+    let near: Vec<String> = nearest(&given[..end], known.clone())
+        .into_iter()
+        .map(|name| format!("{name:?}"))
+        .collect();
+    let hint = if near.is_empty() {
+        format!("known: {}", known.collect::<Vec<_>>().join(", "))
+    } else {
+        format!("did you mean {}?", either(&near))
+    };
     let more = if end < given.len() { " and so on" } else { "" };
     let given = &given[..end];
     Fault::new(
@@ -335,7 +349,11 @@ fn find_species(name: &str) -> Result<Species, Fault> {
 }
 
 fn nearest_species(name: &str) -> Option<Species> {
-    nearest(name, SPECIES.iter().map(|(_, name)| *name)).and_then(Species::find)
+    let name = &name[..name.floor_char_boundary(64)];
+    match nearest(name, SPECIES.iter().map(|(_, name)| *name))[..] {
+        [only] => Species::find(only),
+        _ => None,
+    }
 }
 
 fn find_field(name: &str) -> Result<Field, Fault> {

@@ -1,16 +1,15 @@
 //! From combined sums to rows: the columns that every run has, those of the gauges, and the events.
 
-use super::contribution::{Combined, Condition, Words};
+use super::contribution::{Combined, Condition, CostWords, Words};
 use super::history::History;
 use super::status::{Fault, Status};
 use crate::config::{Config, Coordinate};
-use crate::gauges::{Active, Entry, Moment, Plan, Presence, Reading, Reduced};
-use crate::lend::{Field, SPECIES, Species};
-use crate::series::record::{Record, Row, Value};
+use crate::gauges::{Active, Entry, Moment, Need, NeedState, Plan, Presence, Reading};
+use crate::lend::{SPECIES, Species};
+use crate::series::record::{Record, Rows, Value};
 use crate::series::schema::{Column, Kind, Table, ValueType};
 use crate::series::{Series, SeriesError, Trouble};
 use crate::units::constants::{GIGAYEAR, MEGAYEAR, YEAR};
-use std::collections::HashSet;
 use std::sync::Arc;
 use std::time::{Duration, SystemTime, UNIX_EPOCH};
 
@@ -214,19 +213,48 @@ pub(super) fn closing_columns(words: &Words) -> Vec<Column> {
             "library_seconds",
             "of it, time inside calls of this library; of all ranks, the largest",
         ),
+        seconds(
+            "wait_seconds",
+            "of that, time waiting for other ranks because two earlier rows were still in flight; of all ranks, the \
+             largest",
+        ),
     ]);
     columns
+}
+
+#[derive(Default)]
+struct Scratch {
+    needs: Vec<(Need, NeedState)>,
+    notes: Vec<&'static str>,
+    /// Sources and texts.
+    events: Vec<(Value, Value)>,
+}
+
+/// All that a row is made of, besides the gauges.
+#[derive(Clone, Copy)]
+pub(super) struct Made<'a> {
+    pub config: &'a Config,
+    pub plan: &'a Plan,
+    pub words: &'a Words,
+    pub context: &'a Context,
+    pub combined: &'a Combined,
+    /// What all ranks contributed.
+    pub buffer: &'a [u64],
 }
 
 /// Rank 0's pen: makes rows and hands them to the series.
 pub(super) struct Scribe {
     series: Series,
-    /// Gaps already told as an event.
-    told: HashSet<(usize, Species, Option<Field>)>,
+    /// Gaps already told as an event: a bit for each reason, by gauge and species.
+    told: Vec<[u64; Species::COUNT]>,
     /// Notes of gauges that are written down.
-    noted: HashSet<(usize, &'static str)>,
+    noted: Vec<(usize, &'static str)>,
+    /// What is used anew for every row, kept so that a row allocates nothing.
+    scratch: Scratch,
     /// Rows of earlier legs, until the first row of this one.
     history: Option<Arc<History>>,
+    /// Rows and values of the last record.
+    room: (usize, usize),
     last_step: u64,
     last_time: f64,
     durable: Result<(), SeriesError>,
@@ -239,9 +267,11 @@ impl Scribe {
     pub fn new(series: Series, history: Arc<History>) -> Scribe {
         Scribe {
             series,
-            told: HashSet::new(),
-            noted: HashSet::new(),
+            told: Vec::new(),
+            noted: Vec::new(),
+            scratch: Scratch::default(),
             history: Some(history),
+            room: (0, 0),
             last_step: 0,
             last_time: 0.0,
             durable: Ok(()),
@@ -268,17 +298,9 @@ impl Scribe {
     }
 
     /// Turns a completed reduction into rows and hands them over.
-    #[allow(clippy::too_many_arguments)]
-    pub fn write(
-        &mut self,
-        config: &Config,
-        plan: &Plan,
-        gauges: &mut [Active],
-        context: &Context,
-        combined: &Combined,
-        reduced: Reduced,
-    ) {
-        let Some(moment) = moment_of(config, context, combined) else {
+    pub fn write(&mut self, made: Made, gauges: &mut [Active]) {
+        let combined = made.combined;
+        let Some(moment) = moment_of(made.config, made.context, combined) else {
             return;
         };
         (self.last_step, self.last_time) = (moment.step, moment.time);
@@ -287,77 +309,70 @@ impl Scribe {
             self.take_up(&history, &moment, gauges);
         }
         let mut record = self.series.spare();
-        record.rows.clear();
         record.carry.clear();
         record.step = moment.step;
         record.time = moment.time;
         record.step_length = moment.step_length;
-
-        let mut run = clock_values(config, combined, &moment);
-        let mut rows = Vec::new();
-        let mut events = Vec::new();
-        let mut states = combined.needs.iter().copied();
-        for (index, active) in gauges.iter_mut().enumerate() {
-            let needs: Vec<_> = plan.needs[index]
-                .iter()
-                .copied()
-                .zip(states.by_ref())
-                .collect();
-            let reading = Reading {
-                reduced,
-                needs: &needs,
-            };
-            let mut entry = Entry::default();
-            active.gauge.enter(&reading, &moment, &mut entry);
-            entry.run.resize(plan.columns[index].1, Value::Null);
-            run.append(&mut entry.run);
-            rows.append(&mut entry.rows);
-            self.tell_gaps(index, &active.name, &reading, &mut events);
-            for note in entry.notes {
-                if self.noted.insert((index, note)) {
-                    events.push((active.name.clone(), note.to_string()));
-                }
-            }
+        // A new record gets the memory that the last one needed at once.
+        record.rows.reserve(self.room.0, self.room.1);
+        self.put_rows(&mut record.rows, made, &moment, gauges);
+        self.room = (record.rows.len(), record.rows.value_count());
+        if is_first {
+            self.series.stock(self.room.0, self.room.1);
         }
-        run.extend(
-            combined
-                .not_finite
-                .iter()
-                .map(|&count| Value::Unsigned(count)),
-        );
-        run.push(Value::Unsigned(combined.left_out));
-        let in_error = combined.ranks(Condition::InError) + combined.ranks(Condition::InDoubt);
-        run.push(Value::Unsigned(in_error));
-        run.push(Value::Float(
-            SystemTime::now()
-                .duration_since(UNIX_EPOCH)
-                .map_or(0.0, |since| since.as_secs_f64()),
-        ));
-        run.push(Value::Float(combined.host_nanoseconds as f64 * 1e-9));
-        run.push(Value::Float(combined.library_nanoseconds as f64 * 1e-9));
-        if let Some(said) = &combined.said {
-            events.push((format!("rank {}", said.rank), said.text.clone()));
-        }
-
-        record.rows.push(Row {
-            table: RUN,
-            values: run,
-        });
-        record.rows.append(&mut rows);
-        record.rows.extend(
-            events
-                .into_iter()
-                .map(|(source, text)| event_row(moment.step, moment.time, source, text)),
-        );
-        let is_checkpoint = combined.host.checkpoint;
-        if is_checkpoint || is_first {
+        if combined.host.checkpoint || is_first {
             write_carry(gauges, &mut record.carry);
         }
-        if is_checkpoint {
+        if combined.host.checkpoint {
             self.durable = self.series.enter_durably(record, DURABLE_PATIENCE);
         } else if let Err(error) = self.series.enter(record) {
             self.complaint = Some(error);
         }
+    }
+
+    fn put_rows(&mut self, rows: &mut Rows, made: Made, moment: &Moment, gauges: &mut [Active]) {
+        let Made {
+            plan,
+            words,
+            combined,
+            buffer,
+            ..
+        } = made;
+        self.told.resize(gauges.len(), Default::default());
+        let mut scratch = std::mem::take(&mut self.scratch);
+        rows.clear();
+        begin_run_row(rows, made, moment);
+        let reduced = words.packing.reduced(&words.layout, buffer);
+        let mut states = words.needs(buffer);
+        for (index, active) in gauges.iter_mut().enumerate() {
+            scratch.needs.clear();
+            let needs = plan.needs[index].iter().copied();
+            scratch.needs.extend(needs.zip(states.by_ref()));
+            let reading = Reading {
+                reduced,
+                needs: &scratch.needs,
+            };
+            let (first, number) = plan.columns[index];
+            let mut entry = Entry::new(rows, first..first + number, &mut scratch.notes);
+            active.gauge.enter(&reading, moment, &mut entry);
+            self.tell_gaps(index, &active.name, &reading, &mut scratch.events);
+            for note in scratch.notes.drain(..) {
+                if !self.noted.contains(&(index, note)) {
+                    self.noted.push((index, note));
+                    let event = (active.name.as_str().into(), note.into());
+                    scratch.events.push(event);
+                }
+            }
+        }
+        if let Some(said) = &combined.said {
+            let source = format!("rank {}", said.rank);
+            let event = (source.as_str().into(), said.text.as_str().into());
+            scratch.events.push(event);
+        }
+        for (source, text) in scratch.events.drain(..) {
+            put_event(rows, moment.step, moment.time, source, text);
+        }
+        self.scratch = scratch;
     }
 
     /// Says once which fields a gauge does without.
@@ -366,34 +381,33 @@ impl Scribe {
         index: usize,
         name: &str,
         reading: &Reading,
-        events: &mut Vec<(String, String)>,
+        events: &mut Vec<(Value, Value)>,
     ) {
         for (species, species_name) in SPECIES {
-            if !reading
-                .needs
-                .iter()
-                .any(|(need, _)| need.species == species)
-            {
+            let is_needed = |(need, _): &(Need, NeedState)| need.species == species;
+            if !reading.needs.iter().any(is_needed) {
                 continue;
             }
-            let (field, text) = match reading.presence(species) {
+            let presence = reading.presence(species);
+            let reason = match presence {
                 Presence::Measured => continue,
-                Presence::NotLent => (
-                    None,
-                    format!("{species_name} is not lent; what is measured of it is null"),
-                ),
-                Presence::Lacking(field) => (
-                    Some(field),
-                    format!(
-                        "{species_name} {} was not lent, or {species_name} could not be lent, on a rank that has any; \
-                         what is measured of it is null",
-                        field.name()
-                    ),
-                ),
+                Presence::NotLent => 1,
+                Presence::Lacking(field) => 2 << field as u64,
             };
-            if self.told.insert((index, species, field)) {
-                events.push((name.to_string(), text));
+            let told = &mut self.told[index][species as usize];
+            if *told & reason != 0 {
+                continue;
             }
+            *told |= reason;
+            let text = match presence {
+                Presence::Lacking(field) => format!(
+                    "{species_name} {} was not lent, or {species_name} could not be lent, on a rank that has any; \
+                     what is measured of it is null",
+                    field.name()
+                ),
+                _ => format!("{species_name} is not lent; what is measured of it is null"),
+            };
+            events.push((name.into(), text.as_str().into()));
         }
     }
 
@@ -401,13 +415,14 @@ impl Scribe {
     pub fn note_sleep(&mut self, why: &str) {
         let (step, time) = (self.last_step, self.last_time);
         let text = format!("the run fell asleep: {why}");
-        let row = event_row(step, time, "library".to_string(), text);
+        let mut rows = Rows::default();
+        let (source, text) = ("library".into(), text.as_str().into());
+        put_event(&mut rows, step, time, source, text);
         let record = Record {
             step,
             time,
-            step_length: 0.0,
-            rows: vec![row],
-            carry: Vec::new(),
+            rows,
+            ..Record::default()
         };
         if let Err(error) = self.series.enter(record) {
             self.complaint = Some(error);
@@ -424,12 +439,11 @@ impl Scribe {
         if let Some(error) = self.complaint.take() {
             return Err(fault(&error));
         }
-        let status = self.series.status();
-        let begins = status.is_failing && !self.is_failing;
-        self.is_failing = status.is_failing;
-        if !begins {
+        let was_failing = std::mem::replace(&mut self.is_failing, self.series.is_failing());
+        if was_failing || !self.is_failing {
             return Ok(());
         }
+        let status = self.series.status();
         let text = format!(
             "the disk refuses rows ({}); {} wait in memory and are written as soon as it allows",
             status.last_error.as_deref().unwrap_or("unknown"),
@@ -458,10 +472,12 @@ fn name_word(name: &str) -> u64 {
 /// Appends what every gauge must remember: its name, the number of its words, the words.
 fn write_carry(gauges: &[Active], into: &mut Vec<u64>) {
     for active in gauges {
-        let words = active.gauge.carry();
-        if !words.is_empty() {
-            into.extend([name_word(&active.name), words.len() as u64]);
-            into.extend(words);
+        let start = into.len();
+        into.extend([name_word(&active.name), 0]);
+        active.gauge.carry(into);
+        match into.len() - start - 2 {
+            0 => into.truncate(start),
+            words => into[start + 1] = words as u64,
         }
     }
 }
@@ -511,31 +527,42 @@ fn moment_of(config: &Config, context: &Context, combined: &Combined) -> Option<
     Some(moment)
 }
 
-fn clock_values(config: &Config, combined: &Combined, moment: &Moment) -> Vec<Value> {
-    let mut values = vec![
-        Value::Unsigned(moment.step),
-        Value::Float(moment.time),
-        Value::Float(moment.step_length),
-        Value::Unsigned(combined.host.steps),
-        Value::Unsigned(u64::from(combined.host.checkpoint)),
-    ];
+/// The run table's row, with nulls where the gauges' columns are.
+fn begin_run_row(rows: &mut Rows, made: Made, moment: &Moment) {
+    let (combined, config) = (made.combined, made.config);
+    rows.begin(RUN);
+    rows.put(moment.step);
+    rows.put(moment.time);
+    rows.put(moment.step_length);
+    rows.put(combined.host.steps);
+    rows.put(u64::from(combined.host.checkpoint));
     if config.expansion.cosmology().is_some() {
-        values.push(Value::Float(moment.scale_factor));
-        values.push(moment.redshift.into());
-        values.push(Value::Float(moment.age / GIGAYEAR));
+        rows.put(moment.scale_factor);
+        rows.put(moment.redshift);
+        rows.put(moment.age / GIGAYEAR);
     }
-    values
+    rows.put_nulls(made.plan.columns.iter().map(|(_, number)| number).sum());
+    for &count in made.words.not_finite(made.buffer) {
+        rows.put(count);
+    }
+    rows.put(combined.left_out);
+    rows.put(combined.ranks(Condition::InError) + combined.ranks(Condition::InDoubt));
+    let since = SystemTime::now().duration_since(UNIX_EPOCH);
+    rows.put(since.map_or(0.0, |since| since.as_secs_f64()));
+    let CostWords {
+        host,
+        library,
+        waiting,
+    } = combined.cost;
+    for nanoseconds in [host, library, waiting] {
+        rows.put(nanoseconds as f64 * 1e-9);
+    }
 }
 
-fn event_row(step: u64, time: f64, source: String, text: String) -> Row {
-    let values = vec![
-        Value::Unsigned(step),
-        Value::Float(time),
-        Value::Text(source),
-        Value::Text(text),
-    ];
-    Row {
-        table: EVENTS,
-        values,
-    }
+fn put_event(rows: &mut Rows, step: u64, time: f64, source: Value, text: Value) {
+    rows.begin(EVENTS);
+    rows.put(step);
+    rows.put(time);
+    rows.put(source);
+    rows.put(text);
 }

@@ -3,7 +3,7 @@
 //! Little-endian throughout. Null cells take one bit and nothing else; floats keep all their bits, so a
 //! NaN comes back with its payload and is never confused with null.
 
-use super::record::{Record, Row, Value};
+use super::record::{Record, Rows, Value};
 use super::schema::{Column, Schema, ValueType};
 
 /// What stands before a record's rows.
@@ -46,22 +46,22 @@ pub fn encode(
     for word in &record.carry {
         into.extend_from_slice(&word.to_le_bytes());
     }
-    for row in &record.rows {
+    for (table, values) in record.rows.iter() {
         let width = schema
             .tables
-            .get(row.table as usize)
+            .get(table as usize)
             .map_or(0, |table| table.columns.len());
-        encode_row(into, width, row);
+        encode_row(into, width, table, values);
     }
 }
 
-fn encode_row(into: &mut Vec<u8>, width: usize, row: &Row) {
-    into.extend_from_slice(&row.table.to_le_bytes());
+fn encode_row(into: &mut Vec<u8>, width: usize, table: u32, values: &[Value]) {
+    into.extend_from_slice(&table.to_le_bytes());
     let length_at = into.len();
     into.extend_from_slice(&[0; 4]);
     let start = into.len();
     into.resize(start + width.div_ceil(8), 0);
-    for (index, value) in row.values.iter().enumerate().take(width) {
+    for (index, value) in values.iter().enumerate().take(width) {
         match value {
             Value::Null => {
                 into[start + index / 8] |= 1 << (index % 8);
@@ -199,18 +199,12 @@ impl<'a> Payload<'a> {
 
     /// The record as it was entered; `None` when its rows do not fit the schema.
     pub fn record(&self, schema: &Schema) -> Option<Record> {
-        let mut rows = Vec::new();
+        let mut rows = Rows::default();
         self.rows(schema, |table, cells| {
-            let columns = &schema.tables[table].columns;
-            let values = cells
-                .iter()
-                .zip(columns)
-                .map(|(cell, column)| value(cell, column))
-                .collect();
-            rows.push(Row {
-                table: table as u32,
-                values,
-            });
+            rows.begin(table as u32);
+            for (cell, column) in cells.iter().zip(&schema.tables[table].columns) {
+                rows.put(value(cell, column));
+            }
         })?;
         Some(Record {
             step: self.preface.step,
@@ -248,7 +242,7 @@ fn value(cell: &Cell<'_>, column: &Column) -> Value {
         (Cell::Word(word), ValueType::Float) => Value::Float(f64::from_bits(*word)),
         (Cell::Word(word), ValueType::Integer) => Value::Integer(*word as i64),
         (Cell::Word(word), _) => Value::Unsigned(*word),
-        (Cell::Text(text), _) => Value::Text((*text).to_string()),
+        (Cell::Text(text), _) => Value::from(*text),
         (Cell::Words(bytes), ValueType::Float) => {
             Value::Floats(words(bytes).map(f64::from_bits).collect())
         }

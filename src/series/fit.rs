@@ -88,30 +88,31 @@ fn check_column(table: &str, column: &Column) -> Result<(), SeriesError> {
     Ok(())
 }
 
-/// Checks a record against the schema that the series was opened with.
+/// Checks a record against the schema that the series was opened with, and returns what it takes in memory while
+/// it waits for the disk; its frame is never longer.
 ///
 /// # Errors
 /// [`Trouble::Misfit`] with the table, column and value that do not fit.
-pub fn check_record(schema: &Schema, record: &Record) -> Result<(), SeriesError> {
-    for row in &record.rows {
-        let Some(table) = schema.tables.get(row.table as usize) else {
+pub fn check_record(schema: &Schema, record: &Record) -> Result<usize, SeriesError> {
+    let mut bytes = size_of::<Record>() + record.rows.bytes_held() + record.carry.capacity() * 8;
+    for (number, values) in record.rows.iter() {
+        let Some(table) = schema.tables.get(number as usize) else {
             return Err(misfit(format!(
-                "step {}: a row for table number {}, but the schema has {}",
+                "step {}: a row for table number {number}, but the schema has {}",
                 record.step,
-                row.table,
                 schema.tables.len()
             )));
         };
-        if row.values.len() != table.columns.len() {
+        if values.len() != table.columns.len() {
             return Err(misfit(format!(
                 "step {}: a row of {} values for table `{}`, which has {} columns",
                 record.step,
-                row.values.len(),
+                values.len(),
                 table.name,
                 table.columns.len()
             )));
         }
-        for (value, column) in row.values.iter().zip(&table.columns) {
+        for (value, column) in values.iter().zip(&table.columns) {
             if !fits(value, column) {
                 return Err(misfit(format!(
                     "step {}: {} does not fit column `{}` of table `{}`, which holds {} {:?} a cell",
@@ -123,11 +124,18 @@ pub fn check_record(schema: &Schema, record: &Record) -> Result<(), SeriesError>
                     column.value
                 )));
             }
+            bytes += match value {
+                Value::Text(text) => text.len(),
+                Value::Floats(values) => values.len() * 8,
+                Value::Counts(values) => values.len() * 8,
+                _ => 0,
+            };
         }
     }
-    Ok(())
+    Ok(bytes)
 }
 
+#[inline]
 fn fits(value: &Value, column: &Column) -> bool {
     let plain = column.length == 1;
     match value {
@@ -155,21 +163,4 @@ fn kind_of(value: &Value) -> String {
         Value::Floats(values) => format!("a vector of {} floats", values.len()),
         Value::Counts(values) => format!("a vector of {} counts", values.len()),
     }
-}
-
-/// What the record takes in memory, roughly, while it waits for the disk.
-pub fn weight(record: &Record) -> usize {
-    let mut bytes = size_of::<Record>() + record.carry.len() * 8;
-    for row in &record.rows {
-        bytes += size_of_val(row) + row.values.len() * size_of::<Value>();
-        for value in &row.values {
-            bytes += match value {
-                Value::Text(text) => text.len(),
-                Value::Floats(values) => values.len() * 8,
-                Value::Counts(values) => values.len() * 8,
-                _ => 0,
-            };
-        }
-    }
-    bytes
 }

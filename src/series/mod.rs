@@ -12,6 +12,7 @@ mod fit;
 pub mod frame;
 pub mod journal;
 pub mod layout;
+mod mailbox;
 pub mod manifest;
 mod opening;
 pub mod record;
@@ -25,11 +26,10 @@ pub use status::Status;
 
 use crate::team::thread;
 use chain::Chain;
-use crossbeam::channel::{
-    self, Receiver, RecvTimeoutError, SendTimeoutError, Sender, TrySendError,
-};
+use crossbeam::channel::{self, Receiver, RecvTimeoutError};
 use crossbeam::queue::ArrayQueue;
 use disk::{Disk, SystemDisk};
+use mailbox::{Item, Mailbox};
 use record::Record;
 use schema::Schema;
 use status::Shared;
@@ -37,7 +37,7 @@ use std::path::{Path, PathBuf};
 use std::sync::Arc;
 use std::sync::atomic::Ordering;
 use std::time::{Duration, Instant, SystemTime, UNIX_EPOCH};
-use writer::{Item, Writer};
+use writer::{Answer, Writer};
 
 /// What a series is opened with.
 #[derive(Clone, Debug, Default)]
@@ -88,6 +88,13 @@ impl Default for Limits {
     }
 }
 
+/// Written records whose memory is kept.
+const SPARES: usize = 64;
+/// Of these, made when the first row has shown how large they are.
+const STOCK: usize = 40;
+/// Answers about stable storage that wait for a caller; those beyond are of calls whose patience has ended.
+const ANSWERS: usize = 16;
+
 /// One leg of a series, open for writing. Dropping it without [`Series::close`] waits a second at most.
 pub struct Series {
     schema: Schema,
@@ -96,7 +103,9 @@ pub struct Series {
     path: PathBuf,
     shared: Arc<Shared>,
     spares: Arc<ArrayQueue<Record>>,
-    queue: Option<Sender<Item>>,
+    mailbox: Arc<Mailbox>,
+    is_closed: bool,
+    answers: Receiver<Answer>,
     finished: Receiver<bool>,
 }
 
@@ -127,12 +136,14 @@ impl Series {
         let limits = opening.limits;
         let schema = opening.schema.clone();
         let shared = Arc::new(Shared::default());
-        let spares = Arc::new(ArrayQueue::new(4));
-        let (queue, records) = channel::bounded(limits.waiting_records.max(1));
+        let spares = Arc::new(ArrayQueue::new(SPARES));
+        let mailbox = Arc::new(Mailbox::new(limits.waiting_records));
+        let (answer, answers) = channel::bounded(ANSWERS);
         let (opened, is_open) = channel::bounded(1);
         let (finish, finished) = channel::bounded(1);
         let (shared_there, spares_there, path_there) =
             (shared.clone(), spares.clone(), path.clone());
+        let mailbox_there = mailbox.clone();
         // Even opening is done in the thread of ours: a file-size limit sends a signal, and only there it is
         // blocked and dies with the thread.
         thread::spawn("limno series", move || {
@@ -149,9 +160,9 @@ impl Series {
             });
             match begun {
                 Ok((chain, number)) => {
-                    let writer = Writer::new(chain, shared_there, spares_there);
+                    let writer = Writer::new(chain, shared_there, spares_there, answer);
                     if opened.send(Ok(number)).is_ok() {
-                        let is_whole = writer.run(&records);
+                        let is_whole = writer.run(&mailbox_there);
                         drop(end);
                         let _ = finish.try_send(is_whole);
                     }
@@ -180,7 +191,9 @@ impl Series {
             path,
             shared,
             spares,
-            queue: Some(queue),
+            mailbox,
+            is_closed: false,
+            answers,
             finished,
         })
     }
@@ -201,13 +214,26 @@ impl Series {
         self.spares.pop().unwrap_or_default()
     }
 
+    /// Makes ready for records of so many rows and values, as many as wait for the writer in an ordinary run, so
+    /// that it allocates nothing later.
+    pub fn stock(&self, rows: usize, values: usize) {
+        while self.spares.len() < STOCK {
+            let mut record = Record::default();
+            record.rows.reserve(rows, values);
+            let is_small = record.rows.bytes_held() <= writer::SMALL_BYTES;
+            if !is_small || self.spares.push(record).is_err() {
+                return;
+            }
+        }
+    }
+
     /// Hands a record to the writer thread. Never waits and never touches the disk.
     ///
     /// # Errors
     /// [`Trouble::Misfit`] when the record does not fit the schema, [`Trouble::Full`] when too many wait for
     /// the disk (the record is dropped and counted as missing), [`Trouble::Stopped`] when the thread has ended.
     pub fn enter(&self, record: Record) -> Result<(), SeriesError> {
-        self.submit(record, None, Duration::ZERO)
+        self.submit(record, None).map(drop)
     }
 
     /// Hands over a record and returns when it is on stable storage, with all before it.
@@ -218,11 +244,19 @@ impl Series {
     pub fn enter_durably(&self, record: Record, patience: Duration) -> Result<(), SeriesError> {
         let until = Instant::now() + patience;
         let step = record.step;
-        let (reply, is_durable) = channel::bounded(1);
-        self.submit(record, Some(reply), patience)?;
-        match is_durable.recv_timeout(until.saturating_duration_since(Instant::now())) {
-            Ok(true) => Ok(()),
-            Ok(false) => Err(SeriesError::new(
+        // Answers that came after their caller's patience had ended.
+        while self.answers.try_recv().is_ok() {}
+        let number = self.submit(record, Some(until))?;
+        let answer = loop {
+            let left = until.saturating_duration_since(Instant::now());
+            match self.answers.recv_timeout(left) {
+                Ok((answered, _)) if answered != number => {}
+                other => break other,
+            }
+        };
+        match answer {
+            Ok((_, true)) => Ok(()),
+            Ok((_, false)) => Err(SeriesError::new(
                 Trouble::NotDurable,
                 format!(
                     "the row of step {step} is written, but the file system of {} cannot say when it is \
@@ -243,14 +277,10 @@ impl Series {
         }
     }
 
-    fn submit(
-        &self,
-        record: Record,
-        durable: Option<Sender<bool>>,
-        patience: Duration,
-    ) -> Result<(), SeriesError> {
-        fit::check_record(&self.schema, &record)?;
-        let weight = fit::weight(&record) as u64;
+    /// Puts a record into the mailbox and returns its number. One that must be durable waits for room until
+    /// then.
+    fn submit(&self, record: Record, durable_until: Option<Instant>) -> Result<u64, SeriesError> {
+        let weight = fit::check_record(&self.schema, &record)? as u64;
         if weight > frame::PAYLOAD_LIMIT as u64 {
             return Err(SeriesError::new(
                 Trouble::Misfit,
@@ -261,20 +291,19 @@ impl Series {
                 ),
             ));
         }
-        let Some(queue) = &self.queue else {
+        if self.is_closed || self.is_stopped() {
             return Err(self.stopped());
-        };
+        }
         let rows = record.rows.len() as u64;
         let number = self.shared.next_number.fetch_add(1, Ordering::Relaxed);
-        let is_durable = durable.is_some();
         let item = Item {
             record,
             number,
             entered: now_milliseconds(),
             weight,
-            durable,
+            is_durable: durable_until.is_some(),
         };
-        // Counted before the item is in the queue, so that the writer never subtracts what is not there yet.
+        // Counted before the item is in the mailbox, so that the writer never subtracts what is not there yet.
         self.shared.records_waiting.fetch_add(1, Ordering::Relaxed);
         self.shared.rows_waiting.fetch_add(rows, Ordering::Relaxed);
         let before = self
@@ -282,38 +311,48 @@ impl Series {
             .bytes_waiting
             .fetch_add(weight, Ordering::Relaxed);
         let is_over = before > 0 && before + weight > self.limits.waiting_bytes as u64;
-        let refused = if is_over && !is_durable {
-            Refused::Full(item)
-        } else if is_durable {
-            match queue.send_timeout(item, patience) {
-                Ok(()) => return Ok(()),
-                Err(SendTimeoutError::Timeout(item)) => Refused::Full(item),
-                Err(SendTimeoutError::Disconnected(_)) => Refused::Stopped,
-            }
-        } else {
-            match queue.try_send(item) {
-                Ok(()) => return Ok(()),
-                Err(TrySendError::Full(item)) => Refused::Full(item),
-                Err(TrySendError::Disconnected(_)) => Refused::Stopped,
-            }
+        let refused = match durable_until {
+            None if is_over => Some(item),
+            None => self.mailbox.put(item),
+            Some(until) => self.put_until(item, until),
+        };
+        let Some(refused) = refused else {
+            return Ok(number);
         };
         self.shared.records_waiting.fetch_sub(1, Ordering::Relaxed);
         self.shared.rows_waiting.fetch_sub(rows, Ordering::Relaxed);
         self.shared
             .bytes_waiting
             .fetch_sub(weight, Ordering::Relaxed);
-        match refused {
-            Refused::Stopped => Err(self.stopped()),
-            Refused::Full(item) => {
-                let reason = format!("too many rows waited for the disk{}", self.because());
-                let step = item.record.step;
-                self.shared.miss(self.leg, number, &item.record, &reason);
-                Err(SeriesError::new(
-                    Trouble::Full,
-                    format!("the row of step {step} is left out of the series: {reason}"),
-                ))
-            }
+        if self.is_stopped() {
+            return Err(self.stopped());
         }
+        let reason = format!("too many rows waited for the disk{}", self.because());
+        let step = refused.record.step;
+        self.shared.miss(self.leg, number, &refused.record, &reason);
+        Err(SeriesError::new(
+            Trouble::Full,
+            format!("the row of step {step} is left out of the series: {reason}"),
+        ))
+    }
+
+    fn put_until(&self, mut item: Item, until: Instant) -> Option<Item> {
+        loop {
+            item = self.mailbox.put(item)?;
+            if Instant::now() >= until || self.is_stopped() {
+                return Some(item);
+            }
+            std::thread::sleep(Duration::from_millis(1));
+        }
+    }
+
+    fn is_stopped(&self) -> bool {
+        self.shared.is_stopped.load(Ordering::Acquire)
+    }
+
+    /// Is the disk refusing right now?
+    pub fn is_failing(&self) -> bool {
+        self.shared.is_failing.load(Ordering::Relaxed)
     }
 
     /// Where the series stands. Never waits.
@@ -331,9 +370,10 @@ impl Series {
     }
 
     fn finish(&mut self, patience: Duration) -> Result<(), SeriesError> {
-        if self.queue.take().is_none() {
+        if std::mem::replace(&mut self.is_closed, true) {
             return Ok(());
         }
+        self.mailbox.close();
         let outcome = self.finished.recv_timeout(patience);
         self.shared.is_abandoned.store(true, Ordering::Release);
         match outcome {
@@ -375,11 +415,6 @@ impl Series {
             ),
         )
     }
-}
-
-enum Refused {
-    Full(Item),
-    Stopped,
 }
 
 impl Drop for Series {

@@ -5,32 +5,23 @@ use super::chain::Chain;
 use super::encoding;
 use super::frame::kind;
 use super::journal::End;
+use super::mailbox::{Found, Item, Mailbox, Receiver};
 use super::now_milliseconds;
 use super::record::Record;
 use super::status::Shared;
-use crossbeam::channel::{Receiver, RecvTimeoutError, Sender};
+use crossbeam::channel::Sender;
 use crossbeam::queue::ArrayQueue;
 use std::io;
 use std::sync::Arc;
 use std::sync::atomic::Ordering;
 use std::time::{Duration, Instant};
 
-/// A record on its way to the disk.
-pub struct Item {
-    /// What is entered.
-    pub record: Record,
-    /// Its number in the leg.
-    pub number: u64,
-    /// When it was entered, in milliseconds since 1970-01-01 UTC.
-    pub entered: u64,
-    /// What it counts for in the bound on waiting memory.
-    pub weight: u64,
-    /// Told when the record is on stable storage, or `false` when the file system cannot tell.
-    pub durable: Option<Sender<bool>>,
-}
-
 const SHORTEST_PAUSE: Duration = Duration::from_millis(20);
 const LONGEST_PAUSE: Duration = Duration::from_secs(2);
+/// Records of any size that are kept to be filled again.
+const LARGE_SPARES: usize = 4;
+/// Size up to which more of them are kept.
+pub const SMALL_BYTES: usize = 16 << 10;
 const NOTHING_TO_DO: Duration = Duration::from_secs(3600);
 
 /// Everything the thread owns.
@@ -38,29 +29,41 @@ pub struct Writer {
     chain: Chain,
     shared: Arc<Shared>,
     spares: Arc<ArrayQueue<Record>>,
+    answers: Sender<Answer>,
     payload: Vec<u8>,
 }
 
+/// Which record is on stable storage, and whether the file system could say so.
+pub type Answer = (u64, bool);
+
 impl Writer {
-    /// A writer into `chain`; written records are handed back through `spares`.
-    pub fn new(chain: Chain, shared: Arc<Shared>, spares: Arc<ArrayQueue<Record>>) -> Writer {
+    /// A writer into `chain`; written records are handed back through `spares`, and `answers` tells of those
+    /// that somebody waits for.
+    pub fn new(
+        chain: Chain,
+        shared: Arc<Shared>,
+        spares: Arc<ArrayQueue<Record>>,
+        answers: Sender<Answer>,
+    ) -> Writer {
         Writer {
             chain,
             shared,
             spares,
+            answers,
             payload: Vec::new(),
         }
     }
 
-    /// Writes what comes until the other side closes the queue, then ends the leg. Returns whether all that
+    /// Writes what comes until the other side closes the mailbox, then ends the leg. Returns whether all that
     /// was entered is on stable storage.
-    pub fn run(mut self, queue: &Receiver<Item>) -> bool {
+    pub fn run(mut self, mailbox: &Mailbox) -> bool {
+        let mut receiver = Receiver::new(mailbox);
         let mut all_written = true;
         loop {
-            match queue.recv_timeout(self.chain.sync_due_in().unwrap_or(NOTHING_TO_DO)) {
-                Ok(item) => all_written &= self.enter(item),
-                Err(RecvTimeoutError::Timeout) => {}
-                Err(RecvTimeoutError::Disconnected) => break,
+            match receiver.next(self.chain.sync_due_in().unwrap_or(NOTHING_TO_DO)) {
+                Found::Item(item) => all_written &= self.enter(item),
+                Found::Nothing => {}
+                Found::Closed => break,
             }
             if self.chain.sync_due_in() == Some(Duration::ZERO) {
                 self.attempt(|writer| writer.sync().map(drop));
@@ -81,15 +84,23 @@ impl Writer {
         self.shared
             .bytes_waiting
             .fetch_sub(item.weight, Ordering::Relaxed);
-        let _ = self.spares.push(item.record);
-        if let (true, Some(reply)) = (is_written, &item.durable) {
+        self.hand_back(item.record);
+        if is_written && item.is_durable {
             let mut is_sure = false;
             if self.insist(|writer| writer.sync().map(|sure| is_sure = sure)) {
                 // Nobody listens when the caller's patience ended before.
-                let _ = reply.try_send(is_sure);
+                let _ = self.answers.try_send((item.number, is_sure));
             }
         }
         is_written
+    }
+
+    /// Keeps a written record's memory for one to come: of small ones as many as a short rest of the disk lets
+    /// wait, of large ones a few.
+    fn hand_back(&self, record: Record) {
+        if self.spares.len() < LARGE_SPARES || record.rows.bytes_held() <= SMALL_BYTES {
+            let _ = self.spares.push(record);
+        }
     }
 
     /// Tries until it works (true) or nobody waits any longer (false).
@@ -109,12 +120,12 @@ impl Writer {
     }
 
     fn attempt(&mut self, step: impl FnOnce(&mut Writer) -> io::Result<()>) -> bool {
-        let place = self.chain.place();
         let result = step(self);
         self.shared
             .is_failing
             .store(result.is_err(), Ordering::Relaxed);
         if let Err(error) = &result {
+            let place = self.chain.place();
             self.shared
                 .set_error(format!("writing {}: {error}", place.display()));
         }

@@ -80,6 +80,12 @@ static void test(void)
     double elements[8] = {0, 0, 0, 0, 0, 0, 0, INFINITY};
     batch.elements = elements;
     REFUSED(run, limno_tally(run, &batch), LIMNO_BAD_ARGUMENT, "elements", "event 3");
+    /* A host that counts elements otherwise than the config is told, before its numbers are read. */
+    batch.elements = (double *)8, batch.elements_each = 3;
+    REFUSED(run, limno_tally(run, &batch), LIMNO_BAD_ARGUMENT, "stellar_return", "3 numbers", "names 2", "elements_each");
+    batch.elements = elements, batch.elements_each = 2;
+    REFUSED(run, limno_tally(run, &batch), LIMNO_BAD_ARGUMENT, "elements", "event 3");
+    batch.elements_each = 0;
     batch.elements = NULL, batch.metals = (double *)((char *)numbers + 1);
     REFUSED(run, limno_tally(run, &batch), LIMNO_BAD_ARGUMENT, "metals", "misaligned");
     batch.metals = NULL;

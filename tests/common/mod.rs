@@ -283,7 +283,7 @@ pub fn record(step: u64) -> Record {
             values: vec![
                 Value::Unsigned(step),
                 Value::Float(time),
-                Value::Text("centre".to_string()),
+                Value::from("centre"),
                 Value::Unsigned(shell),
                 Value::Float(50.0 * (shell + 1) as f64),
                 Value::Float(outflow),
@@ -309,7 +309,7 @@ pub fn record(step: u64) -> Record {
         step,
         time,
         step_length: 0.03375,
-        rows,
+        rows: rows.into(),
         carry: vec![step, step * step],
     }
 }
@@ -319,8 +319,8 @@ pub fn event(step: u64, gauge: &str, note: &str) -> Row {
     let values = vec![
         Value::Unsigned(step),
         Value::Float(time_of(step)),
-        Value::Text(gauge.to_string()),
-        Value::Text(note.to_string()),
+        Value::from(gauge),
+        Value::from(note),
     ];
     Row { table: 2, values }
 }

@@ -145,6 +145,8 @@ contains
     call check("limno_tally_batch.position", c_loc(it), c_loc(it%position), c_sizeof(it%position))
     call check("limno_tally_batch.particle_id", c_loc(it), c_loc(it%particle_id), &
                c_sizeof(it%particle_id))
+    call check("limno_tally_batch.elements_each", c_loc(it), c_loc(it%elements_each), &
+               c_sizeof(it%elements_each))
   end subroutine check_tally
 
   subroutine check_standing()

@@ -1,4 +1,5 @@
-! limno_due says which steps will be measured, and limno_how_it_stands how many have been.
+! limno_due says which steps will be measured, limno_flush completes them, and limno_how_it_stands tells how many
+! have been.
 include "support/checks.f90"
 
 program what_is_due_is_known_beforehand
@@ -30,6 +31,8 @@ program what_is_due_is_known_beforehand
     call limno_enter(run, status)
     call expect_status(run, status, LIMNO_OK, "entering a step")
   end do
+  call limno_flush(run, status)
+  call expect_status(run, status, LIMNO_OK, "flushing")
   call limno_how_it_stands(run, standing, status)
   call expect_status(run, status, LIMNO_OK, "asking how the run stands")
   call expect(standing%rows == 4 .and. standing%rows_lost == 0, "four rows were entered")

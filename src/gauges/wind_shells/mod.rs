@@ -30,7 +30,6 @@ use super::plan::{BinSums, Plan, TableHandle};
 use super::{Entry, Gauge, Moment, Presence, Reading, Sample};
 use crate::config::{Config, Quantity, Section, Volume};
 use crate::lend::{Field, Species};
-use crate::series::record::{Row, Value};
 use crate::sweep::{BLOCK, Block, Work};
 use crate::units::constants::{KILOPARSEC, SOLAR_MASS, YEAR};
 use flow::Periods;
@@ -351,25 +350,20 @@ impl WindShells {
     fn enter_each(&self, reading: &Reading, moment: &Moment, fitting: usize, entry: &mut Entry) {
         for (station, named) in self.stations.iter().enumerate() {
             for (shell, (inner, outer)) in self.radii(moment).enumerate() {
-                let mut values = vec![
-                    Value::Unsigned(moment.step),
-                    Value::Text(named.name.to_string()),
-                    Value::Unsigned(shell as u64),
-                    Value::Float(inner / KILOPARSEC),
-                    Value::Float(outer / KILOPARSEC),
-                ];
+                entry.row(self.table);
+                entry.cell(moment.step);
+                entry.cell(&named.name);
+                entry.cell(shell as u64);
+                entry.cell(inner / KILOPARSEC);
+                entry.cell(outer / KILOPARSEC);
                 if shell < fitting {
                     let (sums, elements) =
                         self.values_of(reading, moment, station, shell, outer - inner);
-                    values.extend(sums.map(Value::Float));
-                    values.push(Value::Unsigned(elements));
+                    sums.into_iter().for_each(|sum| entry.cell(sum));
+                    entry.cell(elements);
                 } else {
-                    values.extend((0..4).map(|_| Value::Null));
+                    entry.null_cells(4);
                 }
-                entry.rows.push(Row {
-                    table: self.table.0,
-                    values,
-                });
             }
         }
     }
@@ -378,13 +372,12 @@ impl WindShells {
         let mut of_all = std::mem::take(&mut self.values);
         let stations = self.stations.len();
         for (shell, (inner, outer)) in self.radii(moment).enumerate() {
-            let mut values = vec![
-                Value::Unsigned(moment.step),
-                Value::Unsigned(shell as u64),
-                Value::Float(inner / KILOPARSEC),
-                Value::Float(outer / KILOPARSEC),
-                Value::Unsigned(stations as u64),
-            ];
+            entry.row(self.table);
+            entry.cell(moment.step);
+            entry.cell(shell as u64);
+            entry.cell(inner / KILOPARSEC);
+            entry.cell(outer / KILOPARSEC);
+            entry.cell(stations as u64);
             if shell < fitting {
                 // One run of values for each quantity.
                 of_all.clear();
@@ -398,24 +391,18 @@ impl WindShells {
                         of_all[quantity * stations + station] = value;
                     }
                 }
-                values.push(Value::Unsigned(elements));
+                entry.cell(elements);
                 for own in of_all.chunks_exact_mut(stations) {
                     // In the order of the stations, before they change places.
                     let total: f64 = own.iter().sum();
-                    values.extend(
-                        summary::PERCENTILES
-                            .map(|percent| Value::from(summary::percentile(own, percent))),
-                    );
-                    values.push(Value::Float(total));
+                    for percent in summary::PERCENTILES {
+                        entry.cell(summary::percentile(own, percent));
+                    }
+                    entry.cell(total);
                 }
             } else {
-                let nulls = 1 + 3 * (summary::PERCENTILES.len() + 1);
-                values.extend((0..nulls).map(|_| Value::Null));
+                entry.null_cells(1 + 3 * (summary::PERCENTILES.len() + 1));
             }
-            entry.rows.push(Row {
-                table: self.table.0,
-                values,
-            });
         }
         self.values = of_all;
     }
@@ -454,7 +441,7 @@ impl Gauge for WindShells {
         self.make_shells(moment);
         let measured = reading.presence(Species::Gas) == Presence::Measured;
         if measured && self.shells.edges.len() < self.edges.len() {
-            entry.notes.push(
+            entry.note(
                 "a shell reaches beyond half the periodic box and is null as long as it does",
             );
         }

@@ -46,6 +46,7 @@ static const struct place places[] = {
     MEMBER(limno_tally_batch, elements),
     MEMBER(limno_tally_batch, position),
     MEMBER(limno_tally_batch, particle_id),
+    MEMBER(limno_tally_batch, elements_each),
     STRUCT(limno_standing),
     MEMBER(limno_standing, size),
     MEMBER(limno_standing, asleep),
@@ -100,7 +101,7 @@ extern mark limno_mark;
 extern lend limno_lend_array;
 extern tally limno_tally;
 extern sound limno_sound;
-extern plain limno_enter, limno_close;
+extern plain limno_enter, limno_flush, limno_close;
 extern stands limno_how_it_stands;
 extern last_error limno_last_error;
 extern status_name limno_status_name;
