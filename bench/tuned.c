@@ -16,7 +16,7 @@
 #define BY_HAND 0
 #endif
 
-enum { LONGEST = 1024, LANES = 16 };
+enum { LONGEST = 256, LANES = 16, FLUSH = 8192 / LONGEST };
 
 /* The geometry in single precision. */
 struct settings {
@@ -40,27 +40,38 @@ struct sums {
 
 const char *const tuned_form = "AVX-512 by hand";
 
-static inline void flush(double *sums, __m512 values)
+/* Sums in single precision, lane by lane, which stay short. */
+struct running {
+    __m512 rate, mass, outward[SHELLS], inward[SHELLS], shell_mass[SHELLS];
+};
+
+static void flush(double *sums, __m512 *values)
 {
-    __m512d low = _mm512_cvtps_pd(_mm512_castps512_ps256(values));
-    __m512d high = _mm512_cvtps_pd(_mm512_extractf32x8_ps(values, 1));
+    __m512d low = _mm512_cvtps_pd(_mm512_castps512_ps256(*values));
+    __m512d high = _mm512_cvtps_pd(_mm512_extractf32x8_ps(*values, 1));
     _mm512_storeu_pd(sums, _mm512_add_pd(_mm512_loadu_pd(sums), low));
     _mm512_storeu_pd(sums + 8, _mm512_add_pd(_mm512_loadu_pd(sums + 8), high));
+    *values = _mm512_setzero_ps();
 }
 
-static void total(double *sums, const float *numbers, int count)
+static void flush_all(struct sums *sums, struct running *running)
 {
-    __m512 one = _mm512_setzero_ps(), two = one;
+    flush(sums->rate, &running->rate);
+    flush(sums->mass, &running->mass);
+    for (int shell = 0; shell < SHELLS; shell++) {
+        flush(sums->outward[shell], &running->outward[shell]);
+        flush(sums->inward[shell], &running->inward[shell]);
+        flush(sums->shell_mass[shell], &running->shell_mass[shell]);
+    }
+}
+
+static void total(__m512 *sum, const float *numbers, int count)
+{
     int i = 0;
-    for (; i + 32 <= count; i += 32) {
-        one = _mm512_add_ps(one, _mm512_loadu_ps(numbers + i));
-        two = _mm512_add_ps(two, _mm512_loadu_ps(numbers + i + 16));
-    }
-    for (; i < count; i += 16) {
-        __mmask16 there = (__mmask16)(count - i >= 16 ? 0xffff : (1 << (count - i)) - 1);
-        one = _mm512_add_ps(one, _mm512_maskz_loadu_ps(there, numbers + i));
-    }
-    flush(sums, _mm512_add_ps(one, two));
+    for (; i + 16 <= count; i += 16)
+        *sum = _mm512_add_ps(*sum, _mm512_loadu_ps(numbers + i));
+    if (i < count)
+        *sum = _mm512_add_ps(*sum, _mm512_maskz_loadu_ps((__mmask16)((1 << (count - i)) - 1), numbers + i));
 }
 
 /* Component `c` of 16 triples that lie in three registers. */
@@ -128,13 +139,11 @@ static void find_near(struct near *near, const struct settings *set, const float
     near->count = found;
 }
 
-static void measure_near(struct sums *sums, const struct near *near, const struct settings *set, const float *velocity,
-                         const float *mass)
+static inline void measure_near(struct sums *sums, struct running *running, const struct near *near,
+                                const struct settings *set, const float *velocity, const float *mass)
 {
     __m512 zero = _mm512_setzero_ps(), hubble = _mm512_set1_ps(set->hubble);
-    __m512 outward[SHELLS], inward[SHELLS], shell_mass[SHELLS];
-    for (int shell = 0; shell < SHELLS; shell++)
-        outward[shell] = inward[shell] = shell_mass[shell] = zero;
+    __m512 *outward = running->outward, *inward = running->inward, *shell_mass = running->shell_mass;
     for (int i = 0; i < near->count; i += 16) {
         int left = near->count - i;
         __mmask16 there = (__mmask16)(left >= 16 ? 0xffff : (1 << left) - 1);
@@ -167,25 +176,31 @@ static void measure_near(struct sums *sums, const struct near *near, const struc
             beyond = further;
         }
     }
-#pragma GCC unroll 8
-    for (int shell = 0; shell < SHELLS; shell++) {
-        flush(sums->outward[shell], outward[shell]);
-        flush(sums->inward[shell], inward[shell]);
-        flush(sums->shell_mass[shell], shell_mass[shell]);
-    }
 }
 
 #else
 
 const char *const tuned_form = "plain C, vectorised by the compiler";
 
-static void total(double *sums, const float *numbers, int count)
+/* Sums go to double precision at the end of each block already. */
+struct running {
+    double rate, mass;
+};
+
+static void flush_all(struct sums *sums, struct running *running)
+{
+    sums->rate[0] += running->rate;
+    sums->mass[0] += running->mass;
+    *running = (struct running){ 0.0, 0.0 };
+}
+
+static void total(double *sum, const float *numbers, int count)
 {
     float total = 0.0f;
 #pragma omp simd reduction(+ : total)
     for (int i = 0; i < count; i++)
         total += numbers[i];
-    sums[0] += total;
+    *sum += total;
 }
 
 static void find_near(struct near *near, const struct settings *set, const float *position, int count)
@@ -216,9 +231,10 @@ static void find_near(struct near *near, const struct settings *set, const float
     }
 }
 
-static void measure_near(struct sums *sums, const struct near *near, const struct settings *set, const float *velocity,
-                         const float *mass)
+static void measure_near(struct sums *sums, struct running *running, const struct near *near,
+                         const struct settings *set, const float *velocity, const float *mass)
 {
+    (void)running;
     float flux[LONGEST], m[LONGEST];
     for (int k = 0; k < near->count; k++) {
         int i = near->index[k];
@@ -263,17 +279,22 @@ static struct quantities part(const struct gas *gas, const struct settings *set,
     const float *rate = gas->star_formation_rate;
     struct sums sums;
     struct near near;
+    struct running running;
     memset(&sums, 0, sizeof sums);
+    memset(&running, 0, sizeof running);
+    int since = 0;
     for (size_t at = from; at < to; at += LONGEST) {
         int count = to - at < LONGEST ? (int)(to - at) : LONGEST;
-        /* What is gathered later comes out of order, which the processor does not foresee. */
-        for (int number = 0; number < 3 * count; number += 16)
-            __builtin_prefetch(velocity + 3 * at + number, 0, 3);
-        total(sums.rate, rate + at, count);
-        total(sums.mass, mass + at, count);
+        total(&running.rate, rate + at, count);
+        total(&running.mass, mass + at, count);
         find_near(&near, set, position + 3 * at, count);
-        measure_near(&sums, &near, set, velocity + 3 * at, mass + at);
+        measure_near(&sums, &running, &near, set, velocity + 3 * at, mass + at);
+        if (++since == FLUSH) {
+            flush_all(&sums, &running);
+            since = 0;
+        }
     }
+    flush_all(&sums, &running);
     struct quantities found = { .star_formation_rate = lanes(sums.rate), .mass = lanes(sums.mass) };
     for (int shell = 0; shell < SHELLS; shell++) {
         found.outward[shell] = lanes(sums.outward[shell]);
