@@ -5,6 +5,7 @@
 //! would write, and is told for information. Prints "name value" lines with the median, and `_min` and `_max`.
 
 use limnograph::exact::Accumulator;
+use limnograph::team::cells::{Kind, Layout, combine};
 use std::hint::black_box;
 use std::process::ExitCode;
 use std::time::Instant;
@@ -49,6 +50,25 @@ fn timed(sum: fn(&[f64]) -> f64, values: &[f64]) -> (f64, f64) {
     let start = Instant::now();
     let found = sum(black_box(values));
     (start.elapsed().as_secs_f64(), black_box(found))
+}
+
+/// Nanoseconds a cell of the one operation of a reduction takes, for a buffer as the usual gauges make it.
+fn combining() -> f64 {
+    const SUMS: usize = 45;
+    const ROUNDS: u32 = 2000;
+    let mut layout = Layout::default();
+    let part = layout.add(Kind::Wide, 0, SUMS);
+    let (mut other, mut into) = (Vec::new(), Vec::new());
+    layout.clear(&mut other);
+    layout.clear(&mut into);
+    for (index, cell) in other[layout.range(part)].iter_mut().enumerate() {
+        *cell = mixed(index as u64);
+    }
+    let start = Instant::now();
+    for _ in 0..ROUNDS {
+        combine(black_box(&other), black_box(&mut into));
+    }
+    start.elapsed().as_secs_f64() * 1e9 / f64::from(ROUNDS) / layout.len() as f64
 }
 
 fn tell(name: &str, mut values: Vec<f64>) {
@@ -104,5 +124,9 @@ fn main() -> ExitCode {
     tell("plain_sum_seconds", plain);
     tell("sum_in_lanes_seconds", lanes);
     tell("exact_sum_seconds", exact);
+    tell(
+        "combine_ns_per_cell",
+        (0..repetitions).map(|_| combining()).collect(),
+    );
     ExitCode::SUCCESS
 }
