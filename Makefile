@@ -167,7 +167,7 @@ test-mpi: prepare-hosts
 	@$(CARGO) test $(CARGO_MPI) --lib --test 'mpi_*'
 test-hosts: prepare-tests libraries program hosts
 	@scripts/test-hosts.sh
-test-python: prepare-tests $(PYTHON) $(PROGRAM) $(SALTMARSH)
+test-python: prepare-tests $(PYTHON) libraries $(PROGRAM) $(SALTMARSH)
 	@scripts/test-python.sh
 
 $(PYTHON): tests/astropy/requirements.txt | prepare-tests

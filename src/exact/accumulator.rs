@@ -1,34 +1,37 @@
 //! The way in: takes doubles on one thread, a few hundred at a time where it can.
 
+use super::digits::Digits;
 use super::total::Total;
-use super::window::{self, LARGEST};
+use super::window::{self, ROOM, Sums, Window};
 
-/// Digits of 32 bits held in 64-bit integers; the upper halves take up carries until they are spread.
-const DIGITS: usize = 2 * crate::team::cells::WIDE_LIMBS;
-/// Every addition puts less than 2^33 on a digit, so this many fit before a digit could overflow.
-const ROOM: u32 = 1 << 29;
 /// Values that come one by one are held back until so many are there.
 const HELD: usize = 64;
-/// The exponent of the lowest bit of a total.
-const LOWEST: i32 = -1074;
 
 /// Adds doubles without any rounding.
 #[derive(Clone)]
 pub struct Accumulator {
-    digits: [i64; DIGITS],
+    digits: Digits,
     held: [f64; HELD],
     holding: usize,
-    since_spread: u32,
+    /// The window that the last values fitted into, kept because the next ones mostly fit too.
+    window: Option<Window>,
+    /// Sums in that window that are not in the digits yet, and of how many values.
+    high: i64,
+    low: i64,
+    pending: usize,
     left_out: u64,
 }
 
 impl Default for Accumulator {
     fn default() -> Self {
         Accumulator {
-            digits: [0; DIGITS],
+            digits: Digits::default(),
             held: [0.0; HELD],
             holding: 0,
-            since_spread: 0,
+            window: None,
+            high: 0,
+            low: 0,
+            pending: 0,
             left_out: 0,
         }
     }
@@ -51,7 +54,7 @@ impl Accumulator {
             values.iter().for_each(|&value| self.add(value));
         } else {
             values
-                .chunks(LARGEST)
+                .chunks(ROOM / 2)
                 .for_each(|chunk| self.add_chunk(chunk));
         }
     }
@@ -64,69 +67,62 @@ impl Accumulator {
     }
 
     fn add_chunk(&mut self, values: &[f64]) {
-        let Some(window) = window::window_for(window::largest_magnitude(values)) else {
+        if let Some(window) = self.window {
+            let sums = window::sum_in(values, window);
+            if !sums.fit.misfit && !sums.fit.remainder {
+                return self.take(sums, values.len());
+            }
+        }
+        self.add_otherwise(values);
+    }
+
+    /// Adds what does not fit the present window: in another one, and what fits none value by value.
+    #[cold]
+    fn add_otherwise(&mut self, values: &[f64]) {
+        let Some(window) = Window::holding(window::largest_magnitude(values)) else {
             return values.iter().for_each(|&value| self.add_slowly(value));
         };
+        if self.window != Some(window) {
+            self.unload();
+            self.window = Some(window);
+        }
         let sums = window::sum_in(values, window);
-        self.add_integer(sums.high, window.high);
-        self.add_integer(sums.low, window.low);
-        if sums.remainder {
+        self.take(sums, values.len());
+        if sums.fit.remainder {
             for &value in values {
                 self.add_slowly(window::remainder(value, window));
             }
         }
     }
 
-    /// Adds one value whatever it is.
-    fn add_slowly(&mut self, value: f64) {
-        let bits = value.to_bits();
-        let exponent = ((bits >> 52) & 0x7ff) as i32;
-        if exponent == 0x7ff {
-            self.left_out += 1;
-            return;
+    fn take(&mut self, sums: Sums, count: usize) {
+        if self.pending + count > ROOM {
+            self.unload();
         }
-        let fraction = (bits & ((1 << 52) - 1)) as i64;
-        let mantissa = if exponent == 0 {
-            fraction
-        } else {
-            fraction | (1 << 52)
-        };
-        let signed = if value.is_sign_negative() {
-            -mantissa
-        } else {
-            mantissa
-        };
-        self.add_integer(signed, LOWEST + (exponent - 1).max(0));
+        self.high += sums.high;
+        self.low += sums.low;
+        self.pending += count;
     }
 
-    /// Adds `integer` · 2^`place`, for places from the lowest bit of a total up.
-    fn add_integer(&mut self, integer: i64, place: i32) {
-        let shift = (place - LOWEST) as usize;
-        // 63 bits moved by up to 31 reach into at most three digits.
-        let spread = u128::from(integer.unsigned_abs()) << (shift % 32);
-        let sign = integer >> 63;
-        let signed = |part: u128| ((part & 0xffff_ffff) as i64 ^ sign) - sign;
-        let digits = &mut self.digits[shift / 32..shift / 32 + 3];
-        digits[0] += signed(spread);
-        digits[1] += signed(spread >> 32);
-        digits[2] += signed(spread >> 64);
-        self.since_spread += 1;
-        if self.since_spread >= ROOM {
-            self.spread();
+    /// Moves what is pending to the digits.
+    fn unload(&mut self) {
+        if let Some(window) = self.window.filter(|_| self.pending > 0) {
+            self.digits.add_integer(self.high, window.high);
+            self.digits.add_integer(self.low, window.low);
         }
+        (self.high, self.low, self.pending) = (0, 0, 0);
+    }
+
+    fn add_slowly(&mut self, value: f64) {
+        self.left_out += u64::from(!self.digits.add(value));
     }
 
     /// Adds everything another accumulator holds.
     pub fn merge(&mut self, other: &Accumulator) {
-        self.spread();
         let mut other = other.clone();
         other.settle();
-        other.spread();
-        self.digits
-            .iter_mut()
-            .zip(&other.digits)
-            .for_each(|(mine, theirs)| *mine += theirs);
-        self.since_spread += other.since_spread;
+        other.unload();
+        self.digits.merge(&other.digits);
         self.left_out += other.left_out;
     }
 
@@ -139,46 +135,27 @@ impl Accumulator {
         self.left_out + held as u64
     }
 
-    /// Moves what exceeds 32 bits of each digit up to the next.
-    fn spread(&mut self) {
-        let mut carry = 0i64;
-        for digit in &mut self.digits {
-            let value = *digit + carry;
-            carry = value >> 32;
-            *digit = value & 0xffff_ffff;
-        }
-        // The topmost digit keeps the sign.
-        self.digits[DIGITS - 1] += carry << 32;
-        self.since_spread = 1;
+    /// Has nothing been added since it was last cleared?
+    pub fn is_untouched(&self) -> bool {
+        self.digits.is_untouched() && self.holding == 0 && self.pending == 0
     }
 
     /// The exact sum so far.
     pub fn total(&self) -> Total {
-        if self.holding > 0 {
+        if self.holding > 0 || self.pending > 0 {
             let mut settled = self.clone();
             settled.settle();
-            return settled.total();
+            settled.unload();
+            return settled.digits.total();
         }
-        let mut total = Total::default();
-        let mut carry = 0i64;
-        for (limb, pair) in total
-            .limbs_mut()
-            .iter_mut()
-            .zip(self.digits.chunks_exact(2))
-        {
-            let low = pair[0] + carry;
-            let high = pair[1] + (low >> 32);
-            carry = high >> 32;
-            *limb = (low as u64 & 0xffff_ffff) | ((high as u64 & 0xffff_ffff) << 32);
-        }
-        total
+        self.digits.total()
     }
 
-    /// Forgets everything.
+    /// Forgets everything but the size of the last values.
     pub fn clear(&mut self) {
-        self.digits = [0; DIGITS];
+        self.digits.clear();
         self.holding = 0;
-        self.since_spread = 0;
+        (self.high, self.low, self.pending) = (0, 0, 0);
         self.left_out = 0;
     }
 }
@@ -236,7 +213,9 @@ mod tests {
         for &value in &values {
             plain.add(value);
             spread.add(value);
-            spread.spread();
+            spread.settle();
+            spread.unload();
+            spread.digits.spread();
         }
         assert_eq!(plain.total(), spread.total());
     }

@@ -6,10 +6,13 @@
 //! loss, and rounded at the very end. See Neal 2015 (arXiv:1505.05571) for the idea.
 
 mod accumulator;
+mod bins;
+mod digits;
 mod total;
 mod window;
 
 pub use accumulator::Accumulator;
+pub use bins::{Bins, Rounded};
 pub use total::Total;
 
 /// Maps a double that is not NaN to an integer with the same order; never 0.

@@ -3,14 +3,16 @@
 //! Adding a large constant 1.5·2^(q+52) to x rounds x to a multiple of 2^q and leaves that multiple in the
 //! low bits of the sum; the rounding error of the addition is itself a double, which a second constant takes
 //! up in the same way 52 binary places lower. Both multiples are added as 64-bit integers, so no order of
-//! summation and no vector width can change the result. A value that reaches below both words shows itself by
-//! a remainder, and is then added the slow way. Plain IEEE additions throughout: nothing may be fused or
-//! reordered, and Rust does neither.
+//! summation and no vector width can change the result. A value too large for the window changes the exponent
+//! of the first addition; one that reaches below both words shows itself by a remainder, and what remains is
+//! then added the slow way. Plain IEEE additions throughout: nothing may be fused or reordered, and Rust does
+//! neither.
 
 use multiversion::multiversion;
 
-/// Most values in one call: sums of so many 52-bit multiples fit into 63 bits.
-pub(super) const LARGEST: usize = 1024;
+/// Most values that may be added in one window before its sums have to be taken up: each word of a value is less
+/// than 2^52, so the sums stay within 63 bits.
+pub(super) const ROOM: usize = 2048;
 
 /// Where the two words stand: multiples of 2^`high` and of 2^`low`.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -19,27 +21,53 @@ pub(super) struct Window {
     pub low: i32,
 }
 
-/// The sums of both words, and whether any value left a remainder below them.
+/// What became of the values of one call.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(super) struct Fit {
+    /// Some value is too large for the window, or not finite: nothing that came out can be used.
+    pub misfit: bool,
+    /// Some value left a remainder below both words.
+    pub remainder: bool,
+}
+
+/// The sums of both words.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub(super) struct Sums {
     pub high: i64,
     pub low: i64,
-    pub remainder: bool,
+    pub fit: Fit,
 }
 
-/// A window that holds every value no larger than the one with these bits; none for values near the largest
-/// double, or not finite.
-pub(super) fn window_for(largest_bits: u64) -> Option<Window> {
-    let exponent = ((largest_bits >> 52) & 0x7ff) as i32 - 1023;
-    if exponent > 1020 {
-        return None;
+impl Window {
+    /// A window whose low word counts multiples of 2^`low`, for values below 2^(`low` + 103).
+    pub fn at(low: i32) -> Window {
+        let low = low.clamp(-1074, 970 - 52 - 52);
+        Window {
+            high: low + 52,
+            low,
+        }
     }
-    // |x| < 2^(exponent + 1) must stay below 2^(high + 51).
-    let high = (exponent - 50).max(-1074 + 52);
-    Some(Window {
-        high,
-        low: high - 52,
-    })
+
+    /// Values of this magnitude and more do not fit.
+    pub fn limit(self) -> f64 {
+        f64::from_bits(((self.high + 51 + 1023) as u64) << 52)
+    }
+
+    /// A window that holds every value no larger than the one with these bits, and some larger ones; none for
+    /// values near the largest double, or not finite.
+    pub fn holding(largest_bits: u64) -> Option<Window> {
+        const SPARE: i32 = 2;
+        let exponent = ((largest_bits >> 52) & 0x7ff) as i32 - 1023;
+        if exponent > 1020 - SPARE {
+            return None;
+        }
+        // |x| < 2^(exponent + 1) must stay below 2^(high + 51).
+        let high = (exponent + SPARE - 50).max(-1074 + 52);
+        Some(Window {
+            high,
+            low: high - 52,
+        })
+    }
 }
 
 /// 1.5·2^(place + 52): added to a number it rounds to multiples of 2^place.
@@ -59,7 +87,7 @@ pub(super) fn largest_magnitude(values: &[f64]) -> u64 {
     })
 }
 
-/// Sums at most [`LARGEST`] values in a window that holds them all.
+/// Sums at most [`ROOM`] values in a window.
 #[multiversion(targets(
     "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
     "x86_64+avx+avx2",
@@ -67,7 +95,7 @@ pub(super) fn largest_magnitude(values: &[f64]) -> u64 {
 ))]
 pub(super) fn sum_in(values: &[f64], window: Window) -> Sums {
     let (high, low) = (constant(window.high), constant(window.low));
-    let (mut high_bits, mut low_bits, mut remainders) = (0u64, 0u64, 0u64);
+    let (mut high_bits, mut low_bits, mut remainders, mut changes) = (0u64, 0u64, 0u64, 0u64);
     for &value in values {
         let coarse = value + high;
         let rest = value - (coarse - high);
@@ -75,14 +103,48 @@ pub(super) fn sum_in(values: &[f64], window: Window) -> Sums {
         let remainder = rest - (fine - low);
         high_bits = high_bits.wrapping_add(coarse.to_bits());
         low_bits = low_bits.wrapping_add(fine.to_bits());
-        // A zero remainder may carry a sign.
-        remainders |= remainder.to_bits() << 1;
+        changes |= coarse.to_bits() ^ high.to_bits();
+        remainders |= remainder.to_bits();
     }
     let count = values.len() as u64;
     Sums {
         high: high_bits.wrapping_sub(count.wrapping_mul(high.to_bits())) as i64,
         low: low_bits.wrapping_sub(count.wrapping_mul(low.to_bits())) as i64,
-        remainder: remainders != 0,
+        fit: Fit {
+            misfit: changes >> 52 != 0,
+            // A zero remainder may carry a sign.
+            remainder: remainders << 1 != 0,
+        },
+    }
+}
+
+/// Splits values into the words of a window, one multiple each.
+#[multiversion(targets(
+    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
+    "x86_64+avx+avx2",
+    "aarch64+neon"
+))]
+pub(super) fn split_in(
+    values: &[f64],
+    window: Window,
+    high_words: &mut [i64],
+    low_words: &mut [i64],
+) -> Fit {
+    let (high, low) = (constant(window.high), constant(window.low));
+    let (mut remainders, mut changes) = (0u64, 0u64);
+    for ((&value, high_word), low_word) in values.iter().zip(high_words).zip(low_words) {
+        let coarse = value + high;
+        let rest = value - (coarse - high);
+        let fine = rest + low;
+        let remainder = rest - (fine - low);
+        *high_word = coarse.to_bits().wrapping_sub(high.to_bits()) as i64;
+        *low_word = fine.to_bits().wrapping_sub(low.to_bits()) as i64;
+        changes |= coarse.to_bits() ^ high.to_bits();
+        remainders |= remainder.to_bits();
+    }
+    Fit {
+        misfit: changes >> 52 != 0,
+        remainder: remainders << 1 != 0,
     }
 }
 

@@ -18,7 +18,7 @@ mod tallies;
 mod wind_shells;
 
 pub use moment::{Factors, Interval, Moment};
-pub use plan::{Counts, Need, Plan, Sums, TableHandle, Top};
+pub use plan::{BinSums, Counts, Need, Plan, Sums, TableHandle, Top};
 pub use sample::{Packing, Reduced, Sample};
 pub use tallies::{Channel, TallyBatch, TallyBook};
 
@@ -29,6 +29,9 @@ use crate::sweep::{Block, Work};
 
 /// One diagnostic.
 pub trait Gauge: Send + Sync {
+    /// Learns the moment before blocks of it are measured; called at least once a measured step when there are any.
+    fn prepare(&mut self, _moment: &Moment) {}
+
     /// Adds the contributions of a block of elements, all of whose needed fields are lent and finite.
     fn measure(
         &self,

@@ -28,6 +28,19 @@ pub struct Counts {
     pub(super) length: usize,
 }
 
+/// Sums and counts in bins of one gauge.
+#[derive(Clone, Copy, Debug)]
+pub struct BinSums(pub(super) usize);
+
+/// How many bins of how many quantities, and how they are summed.
+#[derive(Clone, Debug)]
+pub(crate) struct BinShape {
+    pub bins: usize,
+    pub quantities: usize,
+    /// For each quantity the power of two to whose multiples contributions are rounded; empty where sums are exact.
+    pub quanta: Vec<i32>,
+}
+
 /// A list of largest items of one gauge.
 #[derive(Clone, Copy, Debug)]
 pub struct Top(pub(super) usize);
@@ -54,6 +67,7 @@ pub struct Plan {
     pub(crate) columns: Vec<(usize, usize)>,
     pub(crate) sums: usize,
     pub(crate) counts: usize,
+    pub(crate) bins: Vec<BinShape>,
     pub(crate) tops: Vec<TopShape>,
     gauge: String,
 }
@@ -67,6 +81,7 @@ impl Plan {
             columns: Vec::new(),
             sums: 0,
             counts: 0,
+            bins: Vec::new(),
             tops: Vec::new(),
             gauge: String::new(),
         }
@@ -152,6 +167,27 @@ impl Plan {
         let first = self.counts;
         self.counts += length;
         Counts { first, length }
+    }
+
+    /// The gauge sums `quantities` quantities exactly in each of `bins` bins, and counts what comes to each.
+    pub fn bins(&mut self, bins: usize, quantities: usize) -> BinSums {
+        self.bins.push(BinShape {
+            bins,
+            quantities,
+            quanta: Vec::new(),
+        });
+        BinSums(self.bins.len() - 1)
+    }
+
+    /// As [`Plan::bins`] where there are too many bins for exact sums: each contribution of a quantity is rounded to
+    /// a multiple of 2^quantum first, in host units. One quantum a quantity.
+    pub fn rounded_bins(&mut self, bins: usize, quanta: Vec<i32>) -> BinSums {
+        self.bins.push(BinShape {
+            bins,
+            quantities: quanta.len(),
+            quanta,
+        });
+        BinSums(self.bins.len() - 1)
     }
 
     /// The gauge keeps the `items` largest items of `words` integers each, compared from the first on.

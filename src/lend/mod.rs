@@ -4,6 +4,7 @@
 //! written. The rules of the room: every description is checked when it is lent, so that reading it later
 //! cannot fail; the only thing trusted is that the memory described is there (see [`View`]).
 
+mod convert;
 mod fields;
 mod lot;
 mod nearest;

@@ -1,5 +1,6 @@
 //! One lent array: how its numbers lie in the host's memory, checked, and read block by block.
 
+use super::convert;
 use std::fmt;
 
 /// The type of the host's numbers.
@@ -227,21 +228,84 @@ impl View {
         }
     }
 
-    /// Reads `into.len()` numbers of one component, from element `start` on, as doubles.
+    /// Reads `into.len()` numbers of one component, from element `start` on, as doubles. Returns whether all are
+    /// finite.
     ///
     /// # Panics
     /// When the range is outside the view: a mistake of ours, not of a host.
-    pub fn read(&self, component: usize, start: usize, into: &mut [f64]) {
+    pub fn read(&self, component: usize, start: usize, into: &mut [f64]) -> bool {
         self.check_block(component, start, into.len());
         let base = self.base(component);
         let stride = self.shape.stride;
         match self.shape.scalar {
-            Scalar::F32 => gather::<f32, f64>(base, stride, start, into, f64::from),
-            Scalar::F64 => gather::<f64, f64>(base, stride, start, into, |x| x),
+            Scalar::F32 => match packed::<f32>(base, stride, start, into.len()) {
+                Some(numbers) => return convert::singles(numbers, into),
+                None => gather::<f32, f64>(base, stride, start, into, f64::from),
+            },
+            Scalar::F64 => match packed::<f64>(base, stride, start, into.len()) {
+                Some(numbers) => return convert::doubles(numbers, into),
+                None => gather::<f64, f64>(base, stride, start, into, |x| x),
+            },
             Scalar::I32 => gather::<i32, f64>(base, stride, start, into, f64::from),
             Scalar::U32 => gather::<u32, f64>(base, stride, start, into, f64::from),
             Scalar::I64 => gather::<i64, f64>(base, stride, start, into, |x| x as f64),
             Scalar::U64 => gather::<u64, f64>(base, stride, start, into, |x| x as f64),
+        }
+        self.shape.scalar.is_integer() || convert::all_finite(into)
+    }
+
+    /// Reads all three components of vectors, from element `start` on, as doubles. Returns whether all are finite.
+    ///
+    /// # Panics
+    /// As [`View::read`].
+    pub fn read_vectors(&self, start: usize, [x, y, z]: [&mut [f64]; 3]) -> bool {
+        let size = self.shape.scalar.bytes() as isize;
+        let triples = matches!(self.bases, Bases::Interleaved(_))
+            && self.shape.component_stride == size
+            && self.shape.stride == 3 * size;
+        if triples {
+            self.check_block(2, start, x.len());
+            let base = self.base(0);
+            // Numbers of a row of vectors follow each other like those of one array three times as long.
+            match self.shape.scalar {
+                Scalar::F32 => {
+                    if let Some(numbers) = packed::<f32>(base, size, 3 * start, 3 * x.len()) {
+                        return convert::single_triples(numbers, x, y, z);
+                    }
+                }
+                Scalar::F64 => {
+                    if let Some(numbers) = packed::<f64>(base, size, 3 * start, 3 * x.len()) {
+                        return convert::double_triples(numbers, x, y, z);
+                    }
+                }
+                _ => {}
+            }
+        }
+        self.read(0, start, x) & self.read(1, start, y) & self.read(2, start, z)
+    }
+
+    /// Lets the processor fetch the elements from `start` on, as far as there are any, into its cache.
+    pub fn fetch_ahead(&self, start: usize, length: usize) {
+        const LINE: usize = 64;
+        let length = length.min(self.count.saturating_sub(start));
+        let stride = self.shape.stride;
+        if length == 0 || stride == 0 {
+            return;
+        }
+        let apart = matches!(self.bases, Bases::Three(_) | Bases::Many(_))
+            || self.shape.component_stride.unsigned_abs() > stride.unsigned_abs();
+        let runs = if apart { self.shape.components } else { 1 };
+        for run in 0..runs {
+            let first = self
+                .base(run)
+                .wrapping_add_signed(stride.wrapping_mul(start as isize));
+            let last = first.wrapping_add_signed(stride.wrapping_mul(length as isize - 1));
+            let (low, high) = (first.min(last), first.max(last));
+            // Elements larger than a line are fetched where they begin.
+            let step = LINE.max(stride.unsigned_abs() / LINE * LINE);
+            for address in (low..=high).step_by(step) {
+                fetch(address);
+            }
         }
     }
 
@@ -351,6 +415,31 @@ fn check_range(
     Ok(())
 }
 
+/// Asks for the cache line of an address; harmless whatever the address is.
+fn fetch(address: usize) {
+    #[cfg(target_arch = "x86_64")]
+    // SAFETY: a prefetch reads nothing that a program could see and never faults.
+    unsafe {
+        use std::arch::x86_64::{_MM_HINT_T0, _mm_prefetch};
+        _mm_prefetch::<_MM_HINT_T0>(address as *const i8);
+    }
+    #[cfg(not(target_arch = "x86_64"))]
+    let _ = address;
+}
+
+/// Numbers that follow each other without a gap, as a slice; none where they do not.
+fn packed<'a, T: Copy>(base: usize, stride: isize, start: usize, length: usize) -> Option<&'a [T]> {
+    let size = size_of::<T>();
+    if stride != size as isize || length == 0 {
+        return None;
+    }
+    let first = base.wrapping_add(start.wrapping_mul(size)) as *const T;
+    // SAFETY: `View::new` checked that the elements lie in one aligned range of the address space that does not
+    // wrap, the caller that this block is inside it; that the host keeps the memory readable and unchanged is the
+    // duty the header states. The slice is used within the call that made it.
+    Some(unsafe { std::slice::from_raw_parts(first, length) })
+}
+
 /// Reads numbers of type `T` at a stride and converts them; unit stride and constants have loops of their own.
 fn gather<T: Copy, U: Copy>(
     base: usize,
@@ -359,26 +448,21 @@ fn gather<T: Copy, U: Copy>(
     into: &mut [U],
     convert: impl Fn(T) -> U,
 ) {
-    let size = size_of::<T>() as isize;
     if into.is_empty() {
         return;
     }
     let first = (base as *const T).wrapping_byte_offset(stride.wrapping_mul(start as isize));
-    if stride == size {
-        // SAFETY: `View::new` checked that the elements lie in one aligned range of the address space that
-        // does not wrap, `check_block` that this block is inside it; that the host keeps the memory readable
-        // and unchanged is the duty the header states.
-        let numbers = unsafe { std::slice::from_raw_parts(first, into.len()) };
+    if let Some(numbers) = packed::<T>(base, stride, start, into.len()) {
         for (to, from) in into.iter_mut().zip(numbers) {
             *to = convert(*from);
         }
     } else if stride == 0 {
-        // SAFETY: as above, for one number.
+        // SAFETY: as in `packed`, for one number.
         into.fill(convert(unsafe { first.read() }));
     } else {
         let mut at = first;
         for to in into {
-            // SAFETY: as above, for this number; stride and base are multiples of its size, so it is aligned.
+            // SAFETY: as in `packed`, for this number; stride and base are multiples of its size, so it is aligned.
             *to = convert(unsafe { at.read() });
             at = at.wrapping_byte_offset(stride);
         }

@@ -2,7 +2,7 @@
 
 use super::contribution::Condition;
 use super::core::Core;
-use super::entering::{Flight, Overdue, Received};
+use super::entering::{Flight, IN_FLIGHT, Overdue, Received};
 use super::rows::Context;
 use super::status::{Fault, Status};
 use crate::team::TeamError;
@@ -91,6 +91,9 @@ impl Core {
             return self.flush(CLOSE_PATIENCE);
         }
         for _ in 0..CLOSE_ROUNDS {
+            while self.flights.len() >= IN_FLIGHT {
+                self.absorb_while_closing()?;
+            }
             self.sweep.clear();
             let mut buffer = self.spare.pop().unwrap_or_default();
             self.words.layout.clear(&mut buffer);

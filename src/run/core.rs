@@ -380,7 +380,7 @@ impl Core {
         let lot = &mut self.lots[species as usize];
         if lot.is_touched() && self.asleep_alone.is_none() {
             self.sweep
-                .sound(species, lot, &self.gauges, &self.plan, moment);
+                .sound(species, lot, &mut self.gauges, &self.plan, moment);
             self.sounded[species as usize] = true;
         }
         lot.let_go();

@@ -19,7 +19,7 @@ use crate::team::{TeamError, Ticket};
 use std::time::{Duration, Instant};
 
 /// Reductions in flight before the oldest is waited for.
-const IN_FLIGHT: usize = 2;
+pub(super) const IN_FLIGHT: usize = 2;
 /// Contributions of a rank in error in flight before it leaves out further ones.
 const IN_DOUBT: usize = 64;
 /// How long a rank waits for the others within a step before it gives up the run (not the host).
@@ -199,38 +199,38 @@ impl Core {
     }
 
     /// Numbers that were not finite on this rank, named.
-    fn left_out(&self) -> Option<Fault> {
+    fn left_out(&mut self) -> Option<Fault> {
+        let overflowed = self.overflowed();
+        let mut total = overflowed;
+        self.sweep
+            .each_worker(|worker| total += worker.not_finite.iter().sum::<u64>());
+        if total == 0 {
+            return None;
+        }
         let mut named = Vec::new();
         for (species, field) in &self.words.checked {
             let index = crate::sweep::not_finite_index(*species, *field);
-            let count: u64 = self
-                .sweep
-                .workers()
-                .iter()
-                .map(|worker| worker.not_finite[index])
-                .sum();
+            let mut count = 0;
+            self.sweep
+                .each_worker(|worker| count += worker.not_finite[index]);
             if count > 0 {
                 named.push(format!("{count} of {} {}", species.name(), field.name()));
             }
         }
-        let overflowed = self.overflowed();
         if overflowed > 0 {
             named.push(format!("{overflowed} contributions that overflowed"));
         }
-        (!named.is_empty()).then(|| {
-            Fault::new(
-                Status::LeftOut,
-                format!("not finite and left out of the row: {}", named.join(", ")),
-            )
-        })
+        Some(Fault::new(
+            Status::LeftOut,
+            format!("not finite and left out of the row: {}", named.join(", ")),
+        ))
     }
 
-    fn overflowed(&self) -> u64 {
+    fn overflowed(&mut self) -> u64 {
+        let mut overflowed = 0;
         self.sweep
-            .workers()
-            .iter()
-            .map(|worker| worker.sample.left_out())
-            .sum()
+            .each_worker(|worker| overflowed += worker.sample.left_out());
+        overflowed
     }
 
     /// A step whose clock this rank could not accept: it still takes part, so that the others do not wait.
@@ -336,9 +336,10 @@ impl Core {
             doubt
         };
         let mut buffer = self.spare.pop().unwrap_or_default();
+        let overflowed = self.overflowed();
         let words = &self.words;
         words.layout.clear(&mut buffer);
-        words.put_condition(&mut buffer, condition, self.overflowed());
+        words.put_condition(&mut buffer, condition, overflowed);
         if let Some(step) = step {
             words.put_step(&mut buffer, step);
         }
@@ -348,12 +349,12 @@ impl Core {
         self.spent = 0;
         self.since = Instant::now();
         words.put_needs(&mut buffer, &self.sweep.needs);
-        for worker in self.sweep.workers() {
+        self.sweep.each_worker(|worker| {
             words.add_not_finite(&mut buffer, &worker.not_finite);
             words
                 .packing
-                .add(&words.layout, &worker.sample, &mut buffer);
-        }
+                .add(&words.layout, &mut worker.sample, &mut buffer);
+        });
         let rank = self.team.rank();
         if let Some(why) = &self.asleep_alone {
             words.put_text(&mut buffer, true, rank, Status::Internal, why);

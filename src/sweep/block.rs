@@ -1,10 +1,37 @@
 //! A block of elements: a few hundred at a time, as doubles, one run of numbers for each component.
 
 use crate::lend::{Field, Scalar, Shape, View};
-use multiversion::multiversion;
 
 /// Elements in a block: few enough that all fields of a block stay in a core's cache.
-pub const BLOCK: usize = 1024;
+pub const BLOCK: usize = 128;
+
+/// Some of the fields.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub(super) struct FieldSet(u32);
+
+const _: () = assert!(Field::COUNT <= u32::BITS as usize);
+
+impl FieldSet {
+    pub fn insert(&mut self, field: Field) {
+        self.0 |= 1 << field as u32;
+    }
+
+    pub fn extend(&mut self, other: FieldSet) {
+        self.0 |= other.0;
+    }
+
+    pub fn is_empty(self) -> bool {
+        self.0 == 0
+    }
+
+    pub fn has(self, index: usize) -> bool {
+        self.0 >> index & 1 == 1
+    }
+
+    fn meets(self, other: FieldSet) -> bool {
+        self.0 & other.0 != 0
+    }
+}
 
 /// Elements of one species, all fields finite.
 pub struct Block<'a> {
@@ -12,8 +39,9 @@ pub struct Block<'a> {
     values: &'a [f64],
     identities: &'a [u64],
     /// Where the first component of each field stands, in runs of [`BLOCK`]; none where it is not lent.
-    runs: [Option<u16>; Field::COUNT],
-    single: &'a [bool; Field::COUNT],
+    runs: &'a [u16; Field::COUNT],
+    fields: FieldSet,
+    singles: FieldSet,
 }
 
 impl<'a> Block<'a> {
@@ -29,23 +57,28 @@ impl<'a> Block<'a> {
 
     /// Is the field lent?
     pub fn has(&self, field: Field) -> bool {
-        self.runs[field as usize].is_some()
+        self.fields.has(field as usize)
     }
 
     /// Does the host keep the field in single precision?
     pub fn is_single(&self, field: Field) -> bool {
-        self.single[field as usize]
+        self.singles.has(field as usize)
     }
 
     /// One component of a field; empty where the field is not lent.
     pub fn component(&self, field: Field, component: usize) -> &'a [f64] {
-        match self.runs[field as usize] {
-            Some(run) => {
-                let start = (run as usize + component) * BLOCK;
-                &self.values[start..start + self.length]
-            }
-            None => &[],
+        if !self.has(field) {
+            return &[];
         }
+        let start = (self.runs[field as usize] as usize + component) * BLOCK;
+        &self.values[start..start + self.length]
+    }
+
+    /// One component of a field that is lent, as long as the longest block; beyond the elements its content means
+    /// nothing.
+    pub fn run(&self, field: Field, component: usize) -> &'a [f64; BLOCK] {
+        let run = self.runs[field as usize] as usize + component;
+        &self.values.as_chunks::<BLOCK>().0[run]
     }
 
     /// The numbers of a field with one component.
@@ -68,28 +101,25 @@ impl<'a> Block<'a> {
     }
 }
 
-/// Room in which a gauge computes the contributions of a block.
+/// Runs of numbers that a gauge may use.
+const RUNS: usize = 12;
+/// Runs of whole numbers likewise.
+const INDICES: usize = 3;
+
+/// Room in which a gauge computes the contributions of a block; its content is left over from whoever came before.
 pub struct Work {
-    runs: Vec<f64>,
+    /// Runs of numbers.
+    pub runs: Box<[[f64; BLOCK]; RUNS]>,
+    /// Runs of whole numbers.
+    pub indices: Box<[[u32; BLOCK]; INDICES]>,
 }
 
 impl Default for Work {
     fn default() -> Self {
         Work {
-            runs: vec![0.0; 4 * BLOCK],
+            runs: Box::new([[0.0; BLOCK]; RUNS]),
+            indices: Box::new([[0; BLOCK]; INDICES]),
         }
-    }
-}
-
-impl Work {
-    /// Four runs of numbers, each as long as a block; their content is left over from whoever came before.
-    pub fn runs(&mut self, length: usize) -> [&mut [f64]; 4] {
-        let mut chunks = self.runs.chunks_exact_mut(BLOCK);
-        std::array::from_fn(|_| {
-            chunks
-                .next()
-                .map_or(&mut [] as &mut [f64], |run| &mut run[..length])
-        })
     }
 }
 
@@ -99,17 +129,19 @@ pub(super) struct Buffers {
     elements: usize,
     values: Vec<f64>,
     identities: Vec<u64>,
-    runs: [Option<u16>; Field::COUNT],
+    runs: [u16; Field::COUNT],
     next_run: u16,
-    single: [bool; Field::COUNT],
+    loaded: FieldSet,
+    singles: FieldSet,
     /// Fields with a number in this block that is not finite.
-    bad: [bool; Field::COUNT],
+    bad: FieldSet,
     compact_values: Vec<f64>,
     compact_identities: Vec<u64>,
+    kept: Vec<u32>,
 }
 
 impl Buffers {
-    pub(super) fn new(elements: usize) -> Buffers {
+    pub fn new(elements: usize) -> Buffers {
         let all: usize = crate::lend::FIELDS
             .iter()
             .map(|info| info.field.components(elements))
@@ -119,121 +151,113 @@ impl Buffers {
             elements,
             values: vec![0.0; all * BLOCK],
             identities: vec![0; BLOCK],
-            runs: [None; Field::COUNT],
+            runs: [0; Field::COUNT],
             next_run: 0,
-            single: [false; Field::COUNT],
-            bad: [false; Field::COUNT],
+            loaded: FieldSet::default(),
+            singles: FieldSet::default(),
+            bad: FieldSet::default(),
             compact_values: Vec::new(),
             compact_identities: Vec::new(),
+            kept: Vec::new(),
         }
     }
 
     /// Starts a new block.
-    pub(super) fn begin(&mut self, length: usize) {
+    pub fn begin(&mut self, length: usize) {
         self.length = length;
-        self.runs = [None; Field::COUNT];
-        self.bad = [false; Field::COUNT];
+        self.loaded = FieldSet::default();
+        self.singles = FieldSet::default();
+        self.bad = FieldSet::default();
         self.next_run = 0;
     }
 
     /// Reads a field's numbers; returns how many elements have one that is not finite.
-    pub(super) fn load(&mut self, field: Field, view: &View, start: usize) -> u64 {
-        self.runs[field as usize] = Some(self.next_run);
-        self.single[field as usize] = view.scalar() == Scalar::F32;
+    pub fn load(&mut self, field: Field, view: &View, start: usize) -> u64 {
+        self.loaded.insert(field);
+        self.runs[field as usize] = self.next_run;
+        if view.scalar() == Scalar::F32 {
+            self.singles.insert(field);
+        }
         if field.info().shape == Shape::Identity {
             view.read_identities(start, &mut self.identities[..self.length]);
             return 0;
         }
         let components = field.components(self.elements);
-        let mut any_bad = false;
-        for component in 0..components {
-            let run = self.next_run as usize * BLOCK;
-            let into = &mut self.values[run..run + self.length];
-            view.read(component, start, into);
-            any_bad |= !all_finite(into);
-            self.next_run += 1;
+        let first = self.next_run as usize * BLOCK;
+        self.next_run += components as u16;
+        let length = self.length;
+        let runs = &mut self.values[first..first + components * BLOCK];
+        let mut is_finite = true;
+        if let ([x, y, z], []) = runs.as_chunks_mut::<BLOCK>()
+            && field.info().shape == Shape::Vector
+        {
+            let into = [&mut x[..length], &mut y[..length], &mut z[..length]];
+            is_finite = view.read_vectors(start, into);
+        } else {
+            for (component, run) in runs.chunks_exact_mut(BLOCK).enumerate() {
+                is_finite &= view.read(component, start, &mut run[..length]);
+            }
         }
-        self.bad[field as usize] = any_bad;
-        if !any_bad {
+        if is_finite {
             return 0;
         }
-        (0..self.length)
+        self.bad.insert(field);
+        (0..length)
             .filter(|&element| !self.element_is_finite(field, element))
             .count() as u64
     }
 
     fn element_is_finite(&self, field: Field, element: usize) -> bool {
-        let Some(run) = self.runs[field as usize] else {
-            return true;
-        };
-        if field.info().shape == Shape::Identity {
-            return true;
-        }
-        (0..field.components(self.elements))
-            .all(|component| self.values[(run as usize + component) * BLOCK + element].is_finite())
+        let run = self.runs[field as usize] as usize;
+        field.info().shape == Shape::Identity
+            || (0..field.components(self.elements))
+                .all(|component| self.values[(run + component) * BLOCK + element].is_finite())
     }
 
     /// Are all these fields finite throughout the block?
-    pub(super) fn is_finite(&self, fields: &[Field]) -> bool {
-        fields.iter().all(|&field| !self.bad[field as usize])
+    pub fn is_finite(&self, fields: FieldSet) -> bool {
+        !self.bad.meets(fields)
     }
 
     /// The whole block, restricted to some fields.
-    pub(super) fn block(&self, fields: &[Field]) -> Block<'_> {
+    pub fn block(&self, fields: FieldSet) -> Block<'_> {
         Block {
             length: self.length,
             values: &self.values,
             identities: &self.identities,
-            runs: std::array::from_fn(|index| {
-                self.runs[index].filter(|_| fields.iter().any(|f| *f as usize == index))
-            }),
-            single: &self.single,
+            runs: &self.runs,
+            fields,
+            singles: self.singles,
         }
     }
 
     /// The elements for which all these fields are finite, moved together; none when there are none.
-    pub(super) fn finite_only(&mut self, fields: &[Field]) -> Option<Block<'_>> {
-        let kept: Vec<usize> = (0..self.length)
-            .filter(|&element| {
-                fields
-                    .iter()
-                    .all(|&field| self.element_is_finite(field, element))
-            })
-            .collect();
-        if kept.is_empty() {
-            return None;
-        }
+    pub fn finite_only(&mut self, fields: FieldSet) -> Option<Block<'_>> {
+        let bad = FieldSet(self.bad.0 & fields.0);
+        let mut kept = std::mem::take(&mut self.kept);
+        kept.clear();
+        kept.extend((0..self.length as u32).filter(|&element| {
+            crate::lend::FIELDS
+                .iter()
+                .filter(|info| bad.has(info.field as usize))
+                .all(|info| self.element_is_finite(info.field, element as usize))
+        }));
         self.compact_values.resize(self.values.len(), 0.0);
         for run in 0..self.next_run as usize {
             for (to, from) in kept.iter().enumerate() {
-                self.compact_values[run * BLOCK + to] = self.values[run * BLOCK + from];
+                self.compact_values[run * BLOCK + to] = self.values[run * BLOCK + *from as usize];
             }
         }
         self.compact_identities.clear();
         self.compact_identities
-            .extend(kept.iter().map(|&from| self.identities[from]));
+            .extend(kept.iter().map(|&from| self.identities[from as usize]));
         let length = kept.len();
-        Some(Block {
+        self.kept = kept;
+        (length > 0).then(|| Block {
             length,
             values: &self.compact_values,
             identities: &self.compact_identities,
             ..self.block(fields)
         })
     }
-}
-
-/// True when no number is NaN or infinite; without branches, so that it runs at the speed of memory.
-#[allow(clippy::eq_op)] // A number minus itself is the question that is asked here.
-#[multiversion(targets("x86_64+avx+avx2", "aarch64+neon"))]
-fn all_finite(values: &[f64]) -> bool {
-    // x - x is zero for a finite x and NaN otherwise, and a NaN stays in the sum.
-    let mut sums = [0.0; 8];
-    let chunks = values.chunks_exact(8);
-    let rest: f64 = chunks.remainder().iter().map(|value| value - value).sum();
-    for chunk in chunks {
-        for (sum, value) in sums.iter_mut().zip(chunk) {
-            *sum += value - value;
-        }
-    }
-    rest == 0.0 && sums.iter().all(|sum| *sum == 0.0)
 }

@@ -9,8 +9,15 @@ mod block;
 pub use block::{BLOCK, Block, Work};
 
 use crate::gauges::{Active, Moment, NeedState, Plan, Sample};
-use crate::lend::{Field, Lot, Species};
-use block::Buffers;
+use crate::lend::{FIELDS, Field, Lot, Species};
+use crate::team::crew::Crew;
+use block::{Buffers, FieldSet};
+use std::sync::atomic::{AtomicUsize, Ordering};
+use std::sync::{Mutex, PoisonError};
+
+/// Elements that a thread takes at a time: many blocks, so that threads seldom meet, and few enough that all end
+/// at about the same time.
+const SHARE: usize = 32 * BLOCK;
 
 /// The memory of one thread: its sample and its block.
 pub struct Worker {
@@ -24,11 +31,12 @@ pub struct Worker {
 
 /// Everything that measures: the gauges' needs resolved, and a worker for each thread.
 pub struct Sweep {
-    workers: Vec<Worker>,
-    /// Made once, and only when more than one thread was asked for.
-    pool: Option<rayon::ThreadPool>,
+    workers: Vec<Mutex<Worker>>,
+    crew: Crew,
     /// What became of each need on this rank since the last row, gauge by gauge.
     pub needs: Vec<Vec<NeedState>>,
+    /// Gauges that can measure the present species, with the fields they read; kept for its memory.
+    ready: Vec<(usize, FieldSet)>,
 }
 
 /// Where a count of numbers that are not finite stands.
@@ -36,9 +44,13 @@ pub fn not_finite_index(species: Species, field: Field) -> usize {
     species as usize * Field::COUNT + field as usize
 }
 
+/// Nothing is left half done in a worker that could matter: after a panic the run sleeps.
+fn worker(cell: &mut Mutex<Worker>) -> &mut Worker {
+    cell.get_mut().unwrap_or_else(PoisonError::into_inner)
+}
+
 impl Sweep {
-    /// Prepares for the gauges of a plan on `threads` threads, of which the caller's is one when it is the
-    /// only one.
+    /// Prepares for the gauges of a plan on `threads` threads, of which the caller's is one.
     ///
     /// # Errors
     /// When the system refuses the threads.
@@ -50,24 +62,17 @@ impl Sweep {
             buffers: Buffers::new(elements),
             work: Work::default(),
         };
-        let pool = (threads > 1).then(|| {
-            rayon::ThreadPoolBuilder::new()
-                .num_threads(threads)
-                .thread_name(|index| format!("limno sweep {index}"))
-                .spawn_handler(|thread| {
-                    crate::team::thread::spawn("limno sweep", || thread.run()).map(|_| ())
-                })
-                .build()
-                .map_err(|error| format!("cannot start {threads} threads for the sweep: {error}"))
-        });
+        let crew = Crew::new(threads)
+            .map_err(|error| format!("cannot start {threads} threads for the sweep: {error}"))?;
         Ok(Sweep {
-            workers: (0..threads).map(|_| worker()).collect(),
-            pool: pool.transpose()?,
+            workers: (0..threads).map(|_| Mutex::new(worker())).collect(),
+            crew,
             needs: plan
                 .needs
                 .iter()
                 .map(|needs| vec![NeedState::default(); needs.len()])
                 .collect(),
+            ready: Vec::with_capacity(plan.needs.len()),
         })
     }
 
@@ -76,15 +81,51 @@ impl Sweep {
         &mut self,
         species: Species,
         lot: &Lot,
-        gauges: &[Active],
+        gauges: &mut [Active],
         plan: &Plan,
         moment: &Moment,
     ) {
-        let mut fields: Vec<Field> = Vec::with_capacity(Field::COUNT);
-        let mut ready: Vec<(usize, Vec<Field>)> = Vec::with_capacity(gauges.len());
+        let fields = self.resolve(species, lot, plan);
+        if self.ready.is_empty() || lot.count() == 0 {
+            return;
+        }
+        for (index, _) in &self.ready {
+            gauges[*index].gauge.prepare(moment);
+        }
+        let pass = Pass {
+            species,
+            lot,
+            gauges,
+            moment,
+            fields,
+            ready: &self.ready,
+        };
+        if lot.count() <= SHARE || self.workers.len() == 1 {
+            return pass.run(0, lot.count(), worker(&mut self.workers[0]));
+        }
+        let next = AtomicUsize::new(0);
+        let workers = &self.workers;
+        self.crew.run(&|number| {
+            let mut worker = workers[number]
+                .lock()
+                .unwrap_or_else(PoisonError::into_inner);
+            loop {
+                let start = next.fetch_add(SHARE, Ordering::Relaxed);
+                if start >= lot.count() {
+                    break;
+                }
+                pass.run(start, (start + SHARE).min(lot.count()), &mut worker);
+            }
+        });
+    }
+
+    /// Finds the gauges that have what they need of a species, and all fields that they read.
+    fn resolve(&mut self, species: Species, lot: &Lot, plan: &Plan) -> FieldSet {
+        let mut fields = FieldSet::default();
+        self.ready.clear();
         for (index, needs) in plan.needs.iter().enumerate() {
             let mut complete = true;
-            let mut wanted = Vec::new();
+            let mut wanted = FieldSet::default();
             for (need, state) in needs.iter().zip(&mut self.needs[index]) {
                 if need.species != species {
                     continue;
@@ -102,64 +143,33 @@ impl Sweep {
                     complete &= need.optional;
                 } else {
                     state.with += 1;
-                    wanted.push(need.field);
+                    wanted.insert(need.field);
                 }
             }
             if complete && !wanted.is_empty() {
-                fields.extend(
-                    wanted
-                        .iter()
-                        .filter(|&field| !fields.contains(field))
-                        .copied()
-                        .collect::<Vec<_>>(),
-                );
-                ready.push((index, wanted));
+                fields.extend(wanted);
+                self.ready.push((index, wanted));
             }
         }
-        if ready.is_empty() || lot.count() == 0 {
-            return;
-        }
-        let pass = Pass {
-            species,
-            lot,
-            gauges,
-            moment,
-            fields: &fields,
-            ready: &ready,
-        };
-        let blocks = lot.count().div_ceil(BLOCK);
-        match &self.pool {
-            None => pass.run(0, lot.count(), &mut self.workers[0]),
-            Some(pool) => {
-                let share = blocks.div_ceil(self.workers.len()) * BLOCK;
-                let pass = &pass;
-                pool.scope(|scope| {
-                    for (index, worker) in self.workers.iter_mut().enumerate() {
-                        let start = (index * share).min(lot.count());
-                        let end = (start + share).min(lot.count());
-                        scope.spawn(move |_| pass.run(start, end, worker));
-                    }
-                });
-            }
-        }
+        fields
     }
 
-    /// The samples of all threads.
-    pub fn workers(&self) -> &[Worker] {
-        &self.workers
+    /// Calls `visit` for the worker of every thread.
+    pub fn each_worker(&mut self, mut visit: impl FnMut(&mut Worker)) {
+        self.workers.iter_mut().for_each(|cell| visit(worker(cell)));
     }
 
     /// The sample of the calling thread, for what is not measured from arrays.
     pub fn own_sample(&mut self) -> &mut Sample {
-        &mut self.workers[0].sample
+        &mut worker(&mut self.workers[0]).sample
     }
 
     /// Forgets what was gathered, keeping the memory.
     pub fn clear(&mut self) {
-        for worker in &mut self.workers {
+        self.each_worker(|worker| {
             worker.sample.clear();
             worker.not_finite.fill(0);
-        }
+        });
         self.needs
             .iter_mut()
             .for_each(|needs| needs.fill(NeedState::default()));
@@ -172,10 +182,10 @@ struct Pass<'a> {
     lot: &'a Lot,
     gauges: &'a [Active],
     moment: &'a Moment,
-    /// Every field that some gauge reads, once.
-    fields: &'a [Field],
+    /// Every field that some gauge reads.
+    fields: FieldSet,
     /// Gauges that have what they need, with the fields they read.
-    ready: &'a [(usize, Vec<Field>)],
+    ready: &'a [(usize, FieldSet)],
 }
 
 impl Pass<'_> {
@@ -188,6 +198,14 @@ impl Pass<'_> {
         }
     }
 
+    fn views(&self) -> impl Iterator<Item = (Field, &crate::lend::View)> {
+        FIELDS
+            .iter()
+            .map(|info| info.field)
+            .filter(|&field| self.fields.has(field as usize))
+            .filter_map(|field| Some((field, self.lot.view(field)?)))
+    }
+
     fn measure_block(&self, start: usize, length: usize, worker: &mut Worker) {
         let Worker {
             sample,
@@ -195,25 +213,20 @@ impl Pass<'_> {
             buffers,
             work,
         } = worker;
-        let mut all_finite = true;
         buffers.begin(length);
-        for &field in self.fields {
-            if let Some(view) = self.lot.view(field) {
-                let bad = buffers.load(field, view, start);
-                not_finite[not_finite_index(self.species, field)] += bad;
-                all_finite &= bad == 0;
-            }
+        for (field, view) in self.views() {
+            let bad = buffers.load(field, view, start);
+            not_finite[not_finite_index(self.species, field)] += bad;
         }
-        for (index, fields) in self.ready {
-            let gauge = &self.gauges[*index].gauge;
-            if all_finite || buffers.is_finite(fields) {
-                gauge.measure(
-                    self.species,
-                    &buffers.block(fields),
-                    self.moment,
-                    work,
-                    sample,
-                );
+        // While this block is measured the next one arrives.
+        for (_, view) in self.views() {
+            view.fetch_ahead(start + length, BLOCK);
+        }
+        for &(index, fields) in self.ready {
+            let gauge = &self.gauges[index].gauge;
+            if buffers.is_finite(fields) {
+                let block = buffers.block(fields);
+                gauge.measure(self.species, &block, self.moment, work, sample);
             } else if let Some(block) = buffers.finite_only(fields) {
                 gauge.measure(self.species, &block, self.moment, work, sample);
             }

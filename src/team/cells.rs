@@ -28,7 +28,7 @@ pub enum Kind {
     Sum = 1,
     /// Each cell: the larger unsigned integer.
     Max = 2,
-    /// Each item of [`WIDE_LIMBS`] cells: addition with carry.
+    /// Each item: addition with carry from cell to cell; [`WIDE_LIMBS`] cells for an exact sum.
     Wide = 3,
     /// One list: the largest items of both, largest first, compared cell by cell from the first; an item
     /// whose first cell is 0 counts as empty.
@@ -87,11 +87,7 @@ pub struct Part(usize);
 impl Layout {
     /// Adds a segment of `items` items of `words` cells each (below 2^24 words, 2^32 items).
     pub fn add(&mut self, kind: Kind, words: usize, items: usize) -> Part {
-        let words = if kind == Kind::Wide {
-            WIDE_LIMBS
-        } else {
-            words.max(1)
-        };
+        let words = words.max(1);
         let segment = Segment { kind, words, items };
         self.segments.push(segment);
         self.offsets.push(self.body);

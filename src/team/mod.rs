@@ -6,6 +6,7 @@
 
 pub mod alone;
 pub mod cells;
+pub mod crew;
 pub mod float;
 pub mod library;
 #[cfg(feature = "mpi")]

@@ -1,0 +1,126 @@
+//! Runs of numbers turned into doubles, and whether all of them are finite.
+//!
+//! Plain loops, compiled for several vector widths and chosen at run time. Conversions are exact or rounded once,
+//! so the width changes nothing but the speed.
+
+use multiversion::multiversion;
+
+/// A single's bits without its sign, from which on it is not finite.
+const LIMIT_32: u32 = 0x7f80_0000;
+/// Added to a double's bits without its sign, it reaches the topmost bit only where the double is not finite.
+const STEP_64: u64 = 1 << 52;
+
+macro_rules! vectorised {
+    ($(#[$doc:meta])* fn $name:ident($($argument:ident: $kind:ty),*) -> bool $body:block) => {
+        $(#[$doc])*
+        #[multiversion(targets(
+            "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
+            "x86_64+avx+avx2",
+            "aarch64+neon"
+        ))]
+        pub(super) fn $name($($argument: $kind),*) -> bool $body
+    };
+}
+
+vectorised! {
+    /// Singles in a row.
+    fn singles(from: &[f32], to: &mut [f64]) -> bool {
+        let mut largest = 0;
+        for (from, to) in from.iter().zip(to) {
+            largest = largest.max(from.to_bits() & !(1 << 31));
+            *to = f64::from(*from);
+        }
+        largest < LIMIT_32
+    }
+}
+
+vectorised! {
+    /// Doubles in a row.
+    fn doubles(from: &[f64], to: &mut [f64]) -> bool {
+        let mut marks = 0;
+        for (from, to) in from.iter().zip(to) {
+            marks |= (from.to_bits() & !(1 << 63)) + STEP_64;
+            *to = *from;
+        }
+        marks >> 63 == 0
+    }
+}
+
+vectorised! {
+    /// Vectors of three singles, one after the other.
+    fn single_triples(from: &[f32], x: &mut [f64], y: &mut [f64], z: &mut [f64]) -> bool {
+        let mut largest = 0;
+        for (((from, x), y), z) in from.as_chunks::<3>().0.iter().zip(x).zip(y).zip(z) {
+            let bits = from.map(|number| number.to_bits() & !(1 << 31));
+            largest = largest.max(bits[0]).max(bits[1]).max(bits[2]);
+            *x = f64::from(from[0]);
+            *y = f64::from(from[1]);
+            *z = f64::from(from[2]);
+        }
+        largest < LIMIT_32
+    }
+}
+
+vectorised! {
+    /// Vectors of three doubles, one after the other.
+    fn double_triples(from: &[f64], x: &mut [f64], y: &mut [f64], z: &mut [f64]) -> bool {
+        let mut marks = 0;
+        for (((from, x), y), z) in from.as_chunks::<3>().0.iter().zip(x).zip(y).zip(z) {
+            let bits = from.map(|number| (number.to_bits() & !(1 << 63)) + STEP_64);
+            marks |= bits[0] | bits[1] | bits[2];
+            [*x, *y, *z] = *from;
+        }
+        marks >> 63 == 0
+    }
+}
+
+/// Are all these doubles finite?
+pub(super) fn all_finite(values: &[f64]) -> bool {
+    let mark = |value: &f64| (value.to_bits() & !(1 << 63)) + STEP_64;
+    values.iter().fold(0, |marks, value| marks | mark(value)) >> 63 == 0
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use proptest::prelude::*;
+
+    proptest! {
+        #[test]
+        fn every_number_arrives_and_none_that_is_not_finite_goes_unseen(
+            singles_given in proptest::collection::vec(proptest::num::f32::ANY, 0..120),
+            doubles_given in proptest::collection::vec(proptest::num::f64::ANY, 0..120),
+        ) {
+            let mut to = vec![0.0; doubles_given.len()];
+            let finite = doubles(&doubles_given, &mut to);
+            prop_assert_eq!(finite, doubles_given.iter().all(|value| value.is_finite()));
+            prop_assert_eq!(all_finite(&doubles_given), finite);
+            prop_assert!(to.iter().zip(&doubles_given).all(|(a, b)| a.to_bits() == b.to_bits()));
+
+            let mut to = vec![0.0; singles_given.len()];
+            let finite = singles(&singles_given, &mut to);
+            prop_assert_eq!(finite, singles_given.iter().all(|value| value.is_finite()));
+            prop_assert!(to.iter().zip(&singles_given).all(|(a, b)| a.to_bits() == f64::from(*b).to_bits() || b.is_nan()));
+
+            let whole = doubles_given.len() / 3;
+            let [mut x, mut y, mut z] = [const { Vec::new() }; 3].map(|_: Vec<f64>| vec![0.0; whole]);
+            let finite = double_triples(&doubles_given[..3 * whole], &mut x, &mut y, &mut z);
+            prop_assert_eq!(finite, doubles_given[..3 * whole].iter().all(|value| value.is_finite()));
+            for element in 0..whole {
+                for (component, run) in [&x, &y, &z].into_iter().enumerate() {
+                    prop_assert_eq!(run[element].to_bits(), doubles_given[3 * element + component].to_bits());
+                }
+            }
+            let whole = singles_given.len() / 3;
+            let [mut x, mut y, mut z] = [const { Vec::new() }; 3].map(|_: Vec<f64>| vec![0.0; whole]);
+            let finite = single_triples(&singles_given[..3 * whole], &mut x, &mut y, &mut z);
+            prop_assert_eq!(finite, singles_given[..3 * whole].iter().all(|value| value.is_finite()));
+            for element in 0..whole {
+                for (component, run) in [&x, &y, &z].into_iter().enumerate() {
+                    let given = singles_given[3 * element + component];
+                    prop_assert!(run[element] == f64::from(given) || given.is_nan());
+                }
+            }
+        }
+    }
+}
