@@ -5,7 +5,7 @@
 //! would write, and is told for information. Prints "name value" lines with the median, and `_min` and `_max`.
 
 use limnograph::exact::Accumulator;
-use limnograph::team::cells::{Kind, Layout, combine};
+use limnograph::team::cells::{Kind, Layout, WIDE_LIMBS, combine};
 use std::hint::black_box;
 use std::process::ExitCode;
 use std::time::Instant;
@@ -54,10 +54,10 @@ fn timed(sum: fn(&[f64]) -> f64, values: &[f64]) -> (f64, f64) {
 
 /// Nanoseconds a cell of the one operation of a reduction takes, for a buffer as the usual gauges make it.
 fn combining() -> f64 {
-    const SUMS: usize = 45;
+    const SUMS: usize = 53;
     const ROUNDS: u32 = 2000;
     let mut layout = Layout::default();
-    let part = layout.add(Kind::Wide, 0, SUMS);
+    let part = layout.add(Kind::Wide, WIDE_LIMBS, SUMS);
     let (mut other, mut into) = (Vec::new(), Vec::new());
     layout.clear(&mut other);
     layout.clear(&mut into);
