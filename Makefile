@@ -177,7 +177,38 @@ $(PYTHON): tests/astropy/requirements.txt | prepare-tests
 	@$(PYTHON) -m pip install --quiet --disable-pip-version-check -r $<
 	@touch $@
 
-bench: prepare-hosts libraries program hosts
+# --- Benchmarks ---------------------------------------------------------------------------------------
+
+# As fast as the compiler makes the rivals on this machine; sums stay in the order written.
+BENCH       := $(BUILD)/bench
+BENCH_FLAGS := -std=gnu11 -O3 -march=native -fopenmp -Wall -Wextra -Iinclude
+BENCH_HOST  := library arrays quantities statistics
+BENCH_OF     = $(patsubst %,$(BENCH)/objects/%.o,$(1))
+BENCH_PROGRAMS := $(addprefix $(BENCH)/,sweep growth stations fixed_cost fixed_cost_mpi ranks libarrays.so)
+
+$(BENCH)/objects/%.o: bench/%.c $(wildcard bench/*.h) $(HEADERS) | prepare-hosts
+	@mkdir -p $(@D)
+	@$(CC) $(BENCH_FLAGS) -c $< -o $@
+$(BENCH)/objects/%_mpi.o: bench/%.c $(wildcard bench/*.h) $(HEADERS) | prepare-hosts
+	@mkdir -p $(@D)
+	@$(MPICC) $(BENCH_FLAGS) -DWITH_MPI -c $< -o $@
+
+$(BENCH)/sweep: $(call BENCH_OF,sweep read_limit fused one_loop_each tuned $(BENCH_HOST))
+$(BENCH)/growth: $(call BENCH_OF,growth $(BENCH_HOST))
+$(BENCH)/stations: $(call BENCH_OF,stations $(BENCH_HOST))
+$(BENCH)/fixed_cost: $(call BENCH_OF,fixed_cost $(BENCH_HOST))
+$(BENCH)/fixed_cost_mpi: $(call BENCH_OF,fixed_cost_mpi $(BENCH_HOST))
+$(BENCH)/ranks: $(call BENCH_OF,ranks_mpi $(BENCH_HOST))
+$(BENCH)/sweep $(BENCH)/growth $(BENCH)/stations $(BENCH)/fixed_cost: | $(LIB)/liblimnograph.so
+	@$(CC) -fopenmp $^ -o $@ $(LINK_ALONE) -lm
+$(BENCH)/fixed_cost_mpi $(BENCH)/ranks: | $(LIB)/liblimnograph_mpi.so
+	@$(MPICC) -fopenmp $^ -o $@ $(LINK_MPI) -lm
+# The same arrays and calls for Python.
+$(BENCH)/libarrays.so: $(patsubst %,bench/%.c,$(BENCH_HOST)) $(wildcard bench/*.h) $(HEADERS) | $(LIB)/liblimnograph.so
+	@mkdir -p $(@D)
+	@$(CC) $(BENCH_FLAGS) -shared -fPIC $(filter %.c,$^) -o $@ $(LINK_ALONE) -lm
+
+bench: prepare-hosts libraries program $(SALTMARSH) $(BENCH_PROGRAMS) $(PYTHON)
 	@bench/run.sh
 
 # --- Install ------------------------------------------------------------------------------------------

@@ -116,6 +116,7 @@ static const struct option options[] = {
     { "--hole-coupling", REAL, FIELD(hole_coupling), 0, 1, "share of radiation that heats gas" },
     { "--hole-kelvin", REAL, FIELD(hole_kelvin), 1e5, 1e9, "temperature jump of heated gas" },
     { "--history", TEXT, FIELD(history_path), 0, 0, "write one line of totals per step to this file" },
+    { "--cost", TEXT, FIELD(cost_path), 0, 0, "write what steps and recording cost to this file" },
     { "--config", TEXT, FIELD(config_path), 0, 0, "config of the recording library" },
     { "--series", TEXT, FIELD(series_path), 0, 0, "series it records to, a directory NAME.limno" },
     { "--test", TEXT, FIELD(test), 0, 0, "run a self-test: growth, conservation or history" },

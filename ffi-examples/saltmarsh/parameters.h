@@ -57,6 +57,7 @@ struct parameters {
     /* What to write, and which self-test to run instead of a run. */
     const char *test;
     const char *history_path;
+    const char *cost_path;
     int64_t dump_step;       /* -1: none */
     const char *dump_path;
     const char *config_path; /* for the recording library */

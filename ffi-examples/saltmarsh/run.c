@@ -1,5 +1,6 @@
 #include "run.h"
 
+#include "cost.h"
 #include "dump.h"
 #include "initial_conditions.h"
 #include "lending.h"
@@ -17,10 +18,12 @@ static int finished(const struct simulation *simulation)
 
 /* What is done with the state at the end of each step, and before the first. */
 static void record(const struct simulation *simulation, struct lending *lending,
-                   struct history *history)
+                   struct history *history, struct cost *cost)
 {
     const struct parameters *parameters = &simulation->parameters;
+    cost_call(cost);
     lending_step(lending, simulation);
+    cost_return(cost);
     history_add(history, simulation);
     if (parameters->dump_step == (int64_t)simulation->clock.step)
         dump_particles(simulation, parameters->dump_path);
@@ -37,11 +40,17 @@ int run(const struct parameters *parameters, int check_history)
     initial_conditions(&simulation);
     first_forces(&simulation, &space);
     struct lending *lending = lending_open(&simulation);
-    record(&simulation, lending, &history);
+    struct cost cost;
+    cost_begin(&cost);
+    record(&simulation, lending, &history, &cost);
+    /* What is done once is not the cost of steps. */
+    cost_begin(&cost);
     while (!finished(&simulation)) {
         advance(&simulation, &space);
-        record(&simulation, lending, &history);
+        record(&simulation, lending, &history, &cost);
     }
+    if (parameters->cost_path != NULL)
+        cost_write(&cost, simulation.clock.step, simulation.comm, parameters->cost_path);
     lending_close(lending);
     int holds = 1;
     if (simulation.rank == 0) {
