@@ -14,6 +14,8 @@ pub struct Need {
     pub optional: bool,
     /// Does the gauge look at some elements only?
     pub of_some: bool,
+    /// Does it find them by rough values?
+    pub roughly: bool,
 }
 
 /// Exact sums of one gauge.
@@ -103,6 +105,7 @@ impl Plan {
             field,
             optional: false,
             of_some: false,
+            roughly: false,
         });
     }
 
@@ -114,6 +117,19 @@ impl Plan {
             field,
             optional: false,
             of_some: true,
+            roughly: false,
+        });
+    }
+
+    /// As [`Plan::need_of_some`], for a field of vectors by whose rough values the gauge finds its elements: see
+    /// [`crate::sweep::Block::roughly`].
+    pub fn need_roughly(&mut self, species: Species, field: Field) {
+        self.add_need(Need {
+            species,
+            field,
+            optional: false,
+            of_some: true,
+            roughly: true,
         });
     }
 
@@ -124,6 +140,7 @@ impl Plan {
             field,
             optional: true,
             of_some: false,
+            roughly: false,
         });
     }
 

@@ -74,6 +74,101 @@ vectorised! {
     }
 }
 
+/// Some of the vectors that lie one after the other.
+///
+/// # Panics
+/// When an element does not exist.
+pub(super) fn some_single_triples(from: &[f32], elements: &[u32], [x, y, z]: [&mut [f64]; 3]) {
+    const CHUNK: usize = 64;
+    let from = from.as_chunks::<3>().0;
+    let mut picked = [[0f32; CHUNK]; 3];
+    let runs = x.chunks_mut(CHUNK).zip(y.chunks_mut(CHUNK)).zip(z.chunks_mut(CHUNK));
+    for (elements, ((x, y), z)) in elements.chunks(CHUNK).zip(runs) {
+        // Moved first and converted together, which is quicker than one by one.
+        let [px, py, pz] = &mut picked;
+        let into = px.iter_mut().zip(py).zip(pz);
+        for (&element, ((px, py), pz)) in elements.iter().zip(into) {
+            [*px, *py, *pz] = from[element as usize];
+        }
+        for (picked, run) in picked.iter().zip([x, y, z]) {
+            singles(&picked[..run.len()], run);
+        }
+    }
+}
+
+/// Rough vectors from three singles each, one after the other; the bits of the largest magnitude.
+#[multiversion(targets(
+    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
+    "x86_64+avx+avx2",
+    "aarch64+neon"
+))]
+pub(super) fn rough_single_triples(
+    from: &[f32],
+    x: &mut [f32],
+    y: &mut [f32],
+    z: &mut [f32],
+) -> u32 {
+    let mut largest = 0;
+    for (((from, x), y), z) in from.as_chunks::<3>().0.iter().zip(x).zip(y).zip(z) {
+        let bits = from.map(|number| number.to_bits() & !(1 << 31));
+        largest = largest.max(bits[0]).max(bits[1]).max(bits[2]);
+        [*x, *y, *z] = *from;
+    }
+    largest
+}
+
+/// As [`rough_single_triples`], from doubles.
+#[multiversion(targets(
+    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
+    "x86_64+avx+avx2",
+    "aarch64+neon"
+))]
+pub(super) fn rough_double_triples(
+    from: &[f64],
+    x: &mut [f32],
+    y: &mut [f32],
+    z: &mut [f32],
+) -> u32 {
+    let mut largest = 0;
+    for (((from, x), y), z) in from.as_chunks::<3>().0.iter().zip(x).zip(y).zip(z) {
+        let rough = from.map(|number| number as f32);
+        let bits = rough.map(|number| number.to_bits() & !(1 << 31));
+        largest = largest.max(bits[0]).max(bits[1]).max(bits[2]);
+        [*x, *y, *z] = rough;
+    }
+    largest
+}
+
+/// Rough numbers from singles in a row; the bits of the largest magnitude.
+#[multiversion(targets(
+    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
+    "x86_64+avx+avx2",
+    "aarch64+neon"
+))]
+pub(super) fn rough_singles(from: &[f32], to: &mut [f32]) -> u32 {
+    let mut largest = 0;
+    for (from, to) in from.iter().zip(to) {
+        largest = largest.max(from.to_bits() & !(1 << 31));
+        *to = *from;
+    }
+    largest
+}
+
+/// As [`rough_singles`], from doubles.
+#[multiversion(targets(
+    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
+    "x86_64+avx+avx2",
+    "aarch64+neon"
+))]
+pub(super) fn rough_doubles(from: &[f64], to: &mut [f32]) -> u32 {
+    let mut largest = 0;
+    for (from, to) in from.iter().zip(to) {
+        *to = *from as f32;
+        largest = largest.max(to.to_bits() & !(1 << 31));
+    }
+    largest
+}
+
 vectorised! {
     /// Are all these singles finite?
     fn are_finite_singles(values: &[f32]) -> bool {

@@ -4,11 +4,13 @@
 //! written. The rules of the room: every description is checked when it is lent, so that reading it later
 //! cannot fail; the only thing trusted is that the memory described is there (see [`View`]).
 
+mod ahead;
 mod convert;
 mod fields;
 mod lot;
 mod view;
 
+pub use ahead::Ahead;
 pub use fields::{FIELDS, Field, FieldInfo, Quantity, SPECIES, Shape, Species};
 pub use lot::Lot;
 pub use view::{ArrayShape, Lent, Scalar, View, ViewError};

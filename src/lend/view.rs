@@ -303,6 +303,81 @@ impl View {
         }
     }
 
+    /// Reads all three components of some vectors, numbered from `start` on, as doubles.
+    ///
+    /// # Panics
+    /// As [`View::read_some`].
+    pub fn read_some_vectors(&self, start: usize, elements: &[u32], runs: [&mut [f64]; 3]) {
+        let size = self.shape.scalar.bytes() as isize;
+        let within = self.count.saturating_sub(start);
+        let is_row = matches!(self.bases, Bases::Interleaved(_))
+            && self.shape.component_stride == size
+            && self.shape.stride == 3 * size;
+        if is_row
+            && self.shape.scalar == Scalar::F32
+            && let Some(numbers) = packed::<f32>(self.base(0), size, 3 * start, 3 * within)
+        {
+            return convert::some_single_triples(numbers, elements, runs);
+        }
+        for (component, run) in runs.into_iter().enumerate() {
+            self.read_some(component, start, elements, run);
+        }
+    }
+
+    /// Reads all three components of vectors, from element `start` on, rounded to singles. Returns the largest
+    /// magnitude among them; none when a number is not finite, or too large for a single.
+    ///
+    /// # Panics
+    /// As [`View::read`].
+    pub fn read_roughly(&self, start: usize, runs: [&mut [f32]; 3]) -> Option<f32> {
+        let length = runs[0].len();
+        self.check_block(2, start, length);
+        let size = self.shape.scalar.bytes() as isize;
+        let stride = self.shape.stride;
+        let triples = matches!(self.bases, Bases::Interleaved(_))
+            && self.shape.component_stride == size
+            && stride == 3 * size;
+        let [x, y, z] = runs;
+        let base = self.base(0);
+        let largest = match self.shape.scalar {
+            Scalar::F32 if triples && let Some(numbers) = packed(base, size, 3 * start, 3 * length) => {
+                convert::rough_single_triples(numbers, x, y, z)
+            }
+            Scalar::F64 if triples && let Some(numbers) = packed(base, size, 3 * start, 3 * length) => {
+                convert::rough_double_triples(numbers, x, y, z)
+            }
+            _ => [x, y, z]
+                .into_iter()
+                .enumerate()
+                .map(|(component, run)| self.read_component_roughly(component, start, run))
+                .max()
+                .unwrap_or(0),
+        };
+        let largest = f32::from_bits(largest);
+        largest.is_finite().then_some(largest)
+    }
+
+    fn read_component_roughly(&self, component: usize, start: usize, into: &mut [f32]) -> u32 {
+        let base = self.base(component);
+        let stride = self.shape.stride;
+        match self.shape.scalar {
+            Scalar::F32 => match packed::<f32>(base, stride, start, into.len()) {
+                Some(numbers) => return convert::rough_singles(numbers, into),
+                None => gather::<f32, f32>(base, stride, start, into, |x| x),
+            },
+            Scalar::F64 => match packed::<f64>(base, stride, start, into.len()) {
+                Some(numbers) => return convert::rough_doubles(numbers, into),
+                None => gather::<f64, f32>(base, stride, start, into, |x| x as f32),
+            },
+            Scalar::I32 => gather::<i32, f32>(base, stride, start, into, |x| x as f32),
+            Scalar::U32 => gather::<u32, f32>(base, stride, start, into, |x| x as f32),
+            Scalar::I64 => gather::<i64, f32>(base, stride, start, into, |x| x as f32),
+            Scalar::U64 => gather::<u64, f32>(base, stride, start, into, |x| x as f32),
+        }
+        let bits = |number: &f32| number.to_bits() & !(1 << 31);
+        into.iter().map(bits).max().unwrap_or(0)
+    }
+
     /// Are all numbers of these elements finite?
     ///
     /// # Panics
@@ -338,10 +413,14 @@ impl View {
         })
     }
 
-    /// Lets the processor fetch the elements from `start` on, as far as there are any, into its cache.
-    pub fn fetch_ahead(&self, start: usize, length: usize) {
-        const LINE: usize = 64;
-        let length = length.min(self.count.saturating_sub(start));
+    /// Visits the stretches of memory in which elements lie: first and last address, and the bytes from one element
+    /// to the next.
+    pub(super) fn each_stretch(
+        &self,
+        start: usize,
+        length: usize,
+        mut visit: impl FnMut(usize, usize, usize),
+    ) {
         let stride = self.shape.stride;
         if length == 0 || stride == 0 {
             return;
@@ -354,12 +433,7 @@ impl View {
                 .base(run)
                 .wrapping_add_signed(stride.wrapping_mul(start as isize));
             let last = first.wrapping_add_signed(stride.wrapping_mul(length as isize - 1));
-            let (low, high) = (first.min(last), first.max(last));
-            // Elements larger than a line are fetched where they begin.
-            let step = LINE.max(stride.unsigned_abs() / LINE * LINE);
-            for line in 0..=(high - low) / step {
-                fetch(low + line * step);
-            }
+            visit(first.min(last), first.max(last), stride.unsigned_abs());
         }
     }
 
@@ -467,18 +541,6 @@ fn check_range(
         ));
     }
     Ok(())
-}
-
-/// Asks for the cache line of an address; harmless whatever the address is.
-fn fetch(address: usize) {
-    #[cfg(target_arch = "x86_64")]
-    // SAFETY: a prefetch reads nothing that a program could see and never faults.
-    unsafe {
-        use std::arch::x86_64::{_MM_HINT_T0, _mm_prefetch};
-        _mm_prefetch::<_MM_HINT_T0>(address as *const i8);
-    }
-    #[cfg(not(target_arch = "x86_64"))]
-    let _ = address;
 }
 
 /// Numbers that follow each other without a gap, as a slice; none where they do not.

@@ -1,6 +1,6 @@
 //! A block of elements: a few hundred at a time, as doubles, one run of numbers for each component.
 
-use crate::lend::{Field, Lot, Scalar, Shape, View};
+use crate::lend::{Ahead, Field, Lot, Scalar, Shape, View};
 
 /// Elements in a block: few enough that all fields of a block stay in a core's cache.
 pub const BLOCK: usize = 256;
@@ -23,6 +23,28 @@ impl Run {
     };
 }
 
+/// One run of rough numbers.
+#[derive(Clone, Copy)]
+struct RoughRun {
+    numbers: [f32; BLOCK],
+    _apart: [f32; APART],
+}
+
+impl RoughRun {
+    const EMPTY: RoughRun = RoughRun {
+        numbers: [0.0; BLOCK],
+        _apart: [0.0; APART],
+    };
+}
+
+/// Vectors of one field, rounded to singles.
+pub struct Rough<'a> {
+    /// The components; beyond the elements their content means nothing.
+    pub runs: [&'a [f32; BLOCK]; 3],
+    /// The largest magnitude of a component.
+    pub largest: f32,
+}
+
 /// Some of the fields.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
 pub(super) struct FieldSet(u32);
@@ -40,6 +62,10 @@ impl FieldSet {
 
     pub fn is_empty(self) -> bool {
         self.0 == 0
+    }
+
+    pub fn with(self, other: FieldSet) -> FieldSet {
+        FieldSet(self.0 | other.0)
     }
 
     pub fn without(self, other: FieldSet) -> FieldSet {
@@ -69,6 +95,7 @@ pub struct Block<'a> {
     /// Where the other fields are read, from element `start` on.
     lot: &'a Lot,
     start: usize,
+    rough: Option<(Field, &'a [RoughRun; 3], f32)>,
 }
 
 impl<'a> Block<'a> {
@@ -105,6 +132,30 @@ impl<'a> Block<'a> {
         } else if let Some(view) = self.lot.view(field) {
             view.read_some(component, self.start, elements, into);
         }
+    }
+
+    /// As [`Block::gather`], for all components of vectors.
+    pub fn gather_vectors(&self, field: Field, elements: &[u32], runs: [&mut [f64]; 3]) {
+        match self.lot.view(field) {
+            Some(view) if !self.loaded.has(field as usize) => {
+                view.read_some_vectors(self.start, elements, runs);
+            }
+            _ => {
+                for (component, run) in runs.into_iter().enumerate() {
+                    self.gather(field, component, elements, run);
+                }
+            }
+        }
+    }
+
+    /// The vectors of a field that the gauge needs roughly; none where they could not be rounded to singles, or where
+    /// elements were left out.
+    pub fn roughly(&self, field: Field) -> Option<Rough<'a>> {
+        let (held, [x, y, z], largest) = self.rough?;
+        (held == field).then_some(Rough {
+            runs: [&x.numbers, &y.numbers, &z.numbers],
+            largest,
+        })
     }
 
     /// One component of a field; empty where the field is not lent, or needed of some elements only.
@@ -149,13 +200,26 @@ const INDICES: usize = 3;
 
 /// Room in which a gauge computes the contributions of a block; its content is left over from whoever came before.
 pub struct Work {
+    /// What is read next: ask for some of it between one loop and the next, and it arrives meanwhile.
+    pub ahead: Ahead,
     runs: Box<[Run; RUNS]>,
     indices: Box<[[u32; BLOCK]; INDICES]>,
+}
+
+/// The parts of a [`Work`].
+pub struct Parts<'a> {
+    /// Runs of numbers.
+    pub runs: [&'a mut [f64; BLOCK]; RUNS],
+    /// Runs of whole numbers.
+    pub indices: [&'a mut [u32; BLOCK]; INDICES],
+    /// As [`Work::ahead`].
+    pub ahead: &'a mut Ahead,
 }
 
 impl Default for Work {
     fn default() -> Self {
         Work {
+            ahead: Ahead::default(),
             runs: Box::new([Run::EMPTY; RUNS]),
             indices: Box::new([[0; BLOCK]; INDICES]),
         }
@@ -163,10 +227,13 @@ impl Default for Work {
 }
 
 impl Work {
-    /// Runs of numbers, and runs of whole numbers.
-    pub fn parts(&mut self) -> ([&mut [f64; BLOCK]; RUNS], &mut [[u32; BLOCK]; INDICES]) {
-        let runs = self.runs.each_mut().map(|run| &mut run.numbers);
-        (runs, &mut self.indices)
+    /// All of it at once.
+    pub fn parts(&mut self) -> Parts<'_> {
+        Parts {
+            runs: self.runs.each_mut().map(|run| &mut run.numbers),
+            indices: self.indices.each_mut(),
+            ahead: &mut self.ahead,
+        }
     }
 }
 
@@ -182,6 +249,9 @@ pub(super) struct Buffers {
     singles: FieldSet,
     /// Fields with a number in this block that is not finite.
     bad: FieldSet,
+    /// Rough vectors of a field, and their largest component.
+    rough: Box<[RoughRun; 3]>,
+    rough_field: Option<(Field, f32)>,
     compact_values: Vec<Run>,
     compact_identities: Vec<u64>,
     kept: Vec<u32>,
@@ -203,6 +273,8 @@ impl Buffers {
             loaded: FieldSet::default(),
             singles: FieldSet::default(),
             bad: FieldSet::default(),
+            rough: Box::new([RoughRun::EMPTY; 3]),
+            rough_field: None,
             compact_values: Vec::new(),
             compact_identities: Vec::new(),
             kept: Vec::new(),
@@ -215,6 +287,7 @@ impl Buffers {
         self.loaded = FieldSet::default();
         self.singles = FieldSet::default();
         self.bad = FieldSet::default();
+        self.rough_field = None;
         self.next_run = 0;
     }
 
@@ -278,12 +351,29 @@ impl Buffers {
         self.load(field, view, start)
     }
 
+    /// As [`Buffers::check`], and makes rough values on the way; one field a block.
+    pub fn check_roughly(&mut self, field: Field, view: &View, start: usize) -> u64 {
+        let length = self.length;
+        if self.rough_field.is_some() {
+            return self.check(field, view, start);
+        }
+        let runs = self.rough.each_mut().map(|run| &mut run.numbers[..length]);
+        match view.read_roughly(start, runs) {
+            Some(largest) => {
+                self.rough_field = Some((field, largest));
+                0
+            }
+            None => self.check(field, view, start),
+        }
+    }
+
     /// The whole block, restricted to some fields; `lot` holds it from element `start` on.
     pub fn block<'a>(&'a self, fields: FieldSet, lot: &'a Lot, start: usize) -> Block<'a> {
         Block {
             loaded: self.loaded,
             lot,
             start,
+            rough: self.rough_field.map(|(field, largest)| (field, &*self.rough, largest)),
             length: self.length,
             values: &self.values,
             identities: &self.identities,
@@ -334,6 +424,7 @@ impl Buffers {
             length,
             values: &self.compact_values,
             identities: &self.compact_identities,
+            rough: None,
             ..self.block(fields, lot, start)
         })
     }

@@ -6,7 +6,7 @@
 
 mod block;
 
-pub use block::{BLOCK, Block, Work};
+pub use block::{BLOCK, Block, Parts, Rough, Work};
 
 use crate::gauges::{Active, Moment, NeedState, Plan, Sample};
 use crate::lend::{FIELDS, Field, Lot, Species};
@@ -46,6 +46,8 @@ struct Fields {
     in_blocks: FieldSet,
     /// Read of some elements by some gauge.
     of_some: FieldSet,
+    /// Those of them by whose rough values the elements are found.
+    roughly: FieldSet,
 }
 
 /// Where a count of numbers that are not finite stands.
@@ -157,6 +159,9 @@ impl Sweep {
                     if need.of_some {
                         of_some.insert(need.field);
                     }
+                    if need.roughly {
+                        fields.roughly.insert(need.field);
+                    }
                 }
             }
             if complete && !wanted.is_empty() {
@@ -227,25 +232,32 @@ impl Pass<'_> {
             buffers,
             work,
         } = worker;
-        let Fields { in_blocks, of_some } = self.fields;
+        let Fields {
+            in_blocks,
+            of_some,
+            roughly,
+        } = self.fields;
         buffers.begin(length);
-        for (field, view) in self.views(in_blocks) {
-            let bad = buffers.load(field, view, start);
+        work.ahead.clear();
+        for (field, view) in self.views(in_blocks.with(of_some).with(roughly)) {
+            let index = field as usize;
+            // While this block is measured the next one arrives.
+            work.ahead.add(view, start + length, BLOCK);
+            work.ahead.some();
+            let mut bad = 0;
+            if roughly.has(index) {
+                bad = buffers.check_roughly(field, view, start);
+            }
+            if in_blocks.has(index) {
+                bad = buffers.load(field, view, start);
+            } else if !roughly.has(index) {
+                bad = buffers.check(field, view, start);
+            }
             not_finite[not_finite_index(self.species, field)] += bad;
-        }
-        for (field, view) in self.views(of_some.without(in_blocks)) {
-            let bad = buffers.check(field, view, start);
-            not_finite[not_finite_index(self.species, field)] += bad;
-        }
-        // While this block is measured the next one arrives.
-        for (_, view) in self
-            .views(in_blocks)
-            .chain(self.views(of_some.without(in_blocks)))
-        {
-            view.fetch_ahead(start + length, BLOCK);
         }
         for &(index, fields) in self.ready {
             let gauge = &self.gauges[index].gauge;
+            work.ahead.some();
             if buffers.is_finite(fields) {
                 let block = buffers.block(fields, self.lot, start);
                 gauge.measure(self.species, &block, self.moment, work, sample);

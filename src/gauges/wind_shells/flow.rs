@@ -33,50 +33,101 @@ fn nearest_image(distance: f64, length: f64, inverse: f64) -> f64 {
 
 /// Elements that one word of marks tells of.
 pub(super) const MARKS: usize = 64;
-/// Elements that are marked at a time.
-const BITS: usize = 8;
 
-/// Squared distances of elements from a station.
+/// The geometry for rough positions.
+pub(super) struct Rough {
+    lengths: [f32; 3],
+    inverses: [f32; 3],
+    centre: [f32; 3],
+    /// Squares beyond these are of elements that lie outside, whatever the rounding.
+    squares: (f32, f32),
+}
+
+impl Rough {
+    /// The geometry of shells from `inner` to `outer` around a place, for positions with components up to `largest`.
+    /// None where rounding to singles would blur the shells.
+    ///
+    /// Each of the roundings on the way to a distance is at most 2^-24 of a number that is no larger than
+    /// position, centre and box together, and there are fewer than eight of them on an axis.
+    pub fn new(
+        periods: &Periods,
+        centre: [f64; 3],
+        (inner, outer): (f64, f64),
+        largest: f32,
+    ) -> Option<Rough> {
+        let all = centre.into_iter().chain(periods.lengths);
+        let size = all.fold(f64::from(largest), |sum, number| sum + number.abs());
+        let blur = size * 2f64.powi(-20);
+        if blur.is_nan() || blur > 0.05 * outer || outer > 1e15 || outer < 1e-12 {
+            return None;
+        }
+        const MARGIN: f64 = 1e-5;
+        let (low, high) = ((inner - blur).max(0.0), outer + blur);
+        Some(Rough {
+            lengths: periods.lengths.map(|length| length as f32),
+            inverses: periods.inverses.map(|inverse| inverse as f32),
+            centre: centre.map(|place| place as f32),
+            squares: (
+                (low * low * (1.0 - MARGIN)) as f32,
+                (high * high * (1.0 + MARGIN)) as f32,
+            ),
+        })
+    }
+
+    /// Marks elements that may lie in the shells, a bit each. What stands beyond the elements is marked at random.
+    pub fn mark(&self, positions: [&[f32; BLOCK]; 3], marks: &mut [u64; BLOCK / MARKS]) {
+        let mut squares = [0.0; BLOCK];
+        rough_squares(positions, self, &mut squares);
+        rough_marks(&squares, self.squares, marks);
+    }
+}
+
 #[multiversion(targets(
     "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
     "x86_64+avx+avx2",
     "aarch64+neon"
 ))]
-pub(super) fn squares(
-    [x, y, z]: [&[f64; BLOCK]; 3],
-    centre: [f64; 3],
-    periods: &Periods,
-    squares: &mut [f64; BLOCK],
-) {
-    let (length, inverse) = (periods.lengths, periods.inverses);
+fn rough_squares([x, y, z]: [&[f32; BLOCK]; 3], rough: &Rough, squares: &mut [f32; BLOCK]) {
+    /// As [`WHOLE`], for singles.
+    const WHOLE: f32 = 12_582_912.0;
+    let (length, inverse, centre) = (rough.lengths, rough.inverses, rough.centre);
+    let nearest = |distance: f32, axis: usize| {
+        distance - length[axis] * ((distance * inverse[axis] + WHOLE) - WHOLE)
+    };
     for (((x, y), z), square) in x.iter().zip(y).zip(z).zip(squares) {
-        let dx = nearest_image(x - centre[0], length[0], inverse[0]);
-        let dy = nearest_image(y - centre[1], length[1], inverse[1]);
-        let dz = nearest_image(z - centre[2], length[2], inverse[2]);
+        let dx = nearest(x - centre[0], 0);
+        let dy = nearest(y - centre[1], 1);
+        let dz = nearest(z - centre[2], 2);
         *square = dx * dx + dy * dy + dz * dz;
     }
 }
 
-/// Marks which squares lie from `low` to `high`, a bit each.
+fn rough_marks(
+    squares: &[f32; BLOCK],
+    bounds: (f32, f32),
+    marks: &mut [u64; BLOCK / MARKS],
+) {
+    let mut flags = [0; BLOCK];
+    flag(squares, bounds, &mut flags);
+    for (word, flags) in marks.iter_mut().zip(flags.as_chunks::<MARKS>().0) {
+        *word = 0;
+        for (place, flags) in flags.as_chunks::<8>().0.iter().enumerate() {
+            // Moves the lowest bits of eight bytes next to each other.
+            const TOGETHER: u64 = 0x0102_0408_1020_4080;
+            let bits = u64::from_le_bytes(*flags).wrapping_mul(TOGETHER) >> 56;
+            *word |= bits << (8 * place);
+        }
+    }
+}
+
 #[multiversion(targets(
     "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
     "x86_64+avx+avx2",
     "aarch64+neon"
 ))]
-pub(super) fn mark(
-    squares: &[f64; BLOCK],
-    (low, high): (f64, f64),
-    marks: &mut [u64; BLOCK / MARKS],
-) {
-    for (word, squares) in marks.iter_mut().zip(squares.as_chunks::<MARKS>().0) {
-        *word = 0;
-        for (place, squares) in squares.as_chunks::<BITS>().0.iter().enumerate() {
-            let mut bits = 0u8;
-            for (bit, &square) in squares.iter().enumerate() {
-                bits |= u8::from((square >= low) & (square <= high)) << bit;
-            }
-            *word |= u64::from(bits) << (BITS * place);
-        }
+fn flag(squares: &[f32; BLOCK], (low, high): (f32, f32), flags: &mut [u8; BLOCK]) {
+    for (square, flag) in squares.iter().zip(flags) {
+        *flag = u8::from((*square >= low) & (*square <= high));
     }
 }
 
@@ -115,6 +166,17 @@ pub(super) fn distances(periods: &Periods, runs: [&mut [f64]; 3], squares: &mut 
         *dz = nearest_image(*dz, length[2], inverse[2]);
         *square = *dx * *dx + *dy * *dy + *dz * *dz;
     }
+}
+
+/// Do all squares lie from `low` to `high`?
+#[multiversion(targets(
+    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
+    "x86_64+avx+avx2",
+    "aarch64+neon"
+))]
+pub(super) fn are_within(squares: &[f64], low: f64, high: f64) -> bool {
+    let outside = |square: &f64| u64::from(!((*square >= low) & (*square <= high)));
+    squares.iter().map(outside).fold(0, |all, one| all | one) == 0
 }
 
 /// Distances from their squares, and what is carried outward: mass times radial velocity, relative to a station of

@@ -30,7 +30,7 @@ use super::plan::{BinSums, Plan, TableHandle};
 use super::{Entry, Gauge, Moment, Presence, Reading, Sample};
 use crate::config::{Config, Quantity, Section, Volume};
 use crate::lend::{Field, Species};
-use crate::sweep::{BLOCK, Block, Work};
+use crate::sweep::{BLOCK, Block, Parts, Work};
 use crate::units::constants::{KILOPARSEC, SOLAR_MASS, YEAR};
 use flow::Periods;
 use stations::{Grid, Station};
@@ -100,7 +100,11 @@ pub(super) fn build(section: &mut Section, config: &Config, plan: &mut Plan) -> 
     let stations = settings::stations(section);
     settings::check_against_box(section, config, frame, &edges);
 
-    plan.need(Species::Gas, Field::Position);
+    if stations.len() > FEW {
+        plan.need(Species::Gas, Field::Position);
+    } else {
+        plan.need_roughly(Species::Gas, Field::Position);
+    }
     for field in [Field::Velocity, Field::Mass] {
         plan.need_of_some(Species::Gas, field);
     }
@@ -182,24 +186,43 @@ impl WindShells {
     fn measure_around_one(&self, block: &Block, work: &mut Work, sample: &mut Sample) {
         let shells = &self.shells;
         let centre = self.stations[0].position;
-        let from = [0, 1, 2].map(|axis| block.run(Field::Position, axis));
-        let mut marks = [0; BLOCK / flow::MARKS];
-        let ([dx, dy, dz, squares, ..], [elements, owners, _]) = work.parts();
-        flow::squares(from, centre, &shells.periods, squares);
-        flow::mark(squares, shells.squares, &mut marks);
-        let count = flow::list(&marks, block.len(), elements);
+        let Parts {
+            runs: [dx, dy, dz, ..],
+            indices: [elements, owners, _],
+            ahead,
+        } = work.parts();
+        let ends = (shells.edges[0], shells.edges[shells.fitting()]);
+        let rough = block.roughly(Field::Position).and_then(|rough| {
+            let geometry = flow::Rough::new(&shells.periods, centre, ends, rough.largest)?;
+            Some((geometry, rough.runs))
+        });
+        let count = match rough {
+            Some((geometry, runs)) => {
+                let mut marks = [0; BLOCK / flow::MARKS];
+                geometry.mark(runs, &mut marks);
+                ahead.some();
+                flow::list(&marks, block.len(), elements)
+            }
+            None => {
+                (0..block.len()).for_each(|element| elements[element] = element as u32);
+                block.len()
+            }
+        };
         if count == 0 {
             return;
         }
         owners[..count].fill(0);
-        for (axis, to) in [&mut *dx, dy, dz].into_iter().enumerate() {
-            for (to, &element) in to.iter_mut().zip(&elements[..count]) {
-                *to = from[axis][element as usize % BLOCK] - centre[axis];
-            }
+        ahead.some();
+        let mut runs = [&mut dx[..count], &mut dy[..count], &mut dz[..count]];
+        block.gather_vectors(
+            Field::Position,
+            &elements[..count],
+            runs.each_mut().map(|run| &mut **run),
+        );
+        for (run, centre) in runs.into_iter().zip(centre) {
+            run.iter_mut().for_each(|to| *to -= centre);
         }
-        let runs = [&mut dx[..count], &mut dy[..count], &mut dz[..count]];
-        flow::distances(&shells.periods, runs, &mut squares[..count]);
-        self.measure_pairs(block, count, work, sample);
+        self.measure_candidates(block, count, work, sample);
     }
 
     /// Measures the elements of a block around those stations that each of them is near.
@@ -216,7 +239,11 @@ impl WindShells {
                     pairs = 0;
                 }
                 let place = &self.stations[owner as usize].position;
-                let ([dx, dy, dz, ..], [elements, owners, _]) = work.parts();
+                let Parts {
+                    runs: [dx, dy, dz, ..],
+                    indices: [elements, owners, _],
+                    ..
+                } = work.parts();
                 dx[pairs] = x[element] - place[0];
                 dy[pairs] = y[element] - place[1];
                 dz[pairs] = z[element] - place[2];
@@ -237,16 +264,25 @@ impl WindShells {
         work: &mut Work,
         sample: &mut Sample,
     ) {
-        let ([dx, dy, dz, squares, ..], [elements, owners, _]) = work.parts();
+        let Parts {
+            runs: [dx, dy, dz, squares, ..],
+            indices: [elements, owners, _],
+            ahead,
+        } = work.parts();
+        ahead.some();
         let runs = [&mut dx[..pairs], &mut dy[..pairs], &mut dz[..pairs]];
         flow::distances(&self.shells.periods, runs, &mut squares[..pairs]);
         let (low, high) = self.shells.squares;
         let mut count = 0;
-        for from in 0..pairs {
-            (dx[count], dy[count], dz[count]) = (dx[from], dy[from], dz[from]);
-            (elements[count], owners[count]) = (elements[from], owners[from]);
-            squares[count] = squares[from];
-            count += usize::from((squares[from] >= low) & (squares[from] <= high));
+        if flow::are_within(&squares[..pairs], low, high) {
+            count = pairs;
+        } else {
+            for from in 0..pairs {
+                (dx[count], dy[count], dz[count]) = (dx[from], dy[from], dz[from]);
+                (elements[count], owners[count]) = (elements[from], owners[from]);
+                squares[count] = squares[from];
+                count += usize::from((squares[from] >= low) & (squares[from] <= high));
+            }
         }
         self.measure_pairs(block, count, work, sample);
     }
@@ -257,11 +293,18 @@ impl WindShells {
     fn measure_pairs(&self, block: &Block, pairs: usize, work: &mut Work, sample: &mut Sample) {
         let shells = &self.shells;
         let mut count = pairs;
-        let (runs, [elements, owners, bins]) = work.parts();
-        let [dx, dy, dz, squares, vx, vy, vz, masses, fluxes, ..] = runs;
-        for (axis, to) in [&mut *vx, vy, vz].into_iter().enumerate() {
-            block.gather(Field::Velocity, axis, &elements[..count], &mut to[..count]);
-        }
+        let Parts {
+            runs: [dx, dy, dz, squares, vx, vy, vz, masses, fluxes, ..],
+            indices: [elements, owners, bins],
+            ahead,
+        } = work.parts();
+        ahead.some();
+        block.gather_vectors(
+            Field::Velocity,
+            &elements[..count],
+            [&mut vx[..count], &mut vy[..count], &mut vz[..count]],
+        );
+        ahead.some();
         block.gather(Field::Mass, 0, &elements[..count], &mut masses[..count]);
         // One station's velocity is subtracted together with the rest; subtracting 0 afterwards changes nothing.
         let mut drift = self.stations[0].velocity;
@@ -286,6 +329,7 @@ impl WindShells {
             radii,
             &mut fluxes[..count],
         );
+        ahead.some();
         let fitting = shells.fitting();
         let ends = (shells.edges[0], shells.edges[fitting]);
         flow::count_edges(radii, &shells.edges[1..fitting], bins);
@@ -296,6 +340,7 @@ impl WindShells {
             ends,
             &mut bins[..count],
         );
+        ahead.some();
         if !are_within {
             // The margins have let some in that lie just outside.
             let mut kept = 0;
