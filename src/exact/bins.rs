@@ -6,6 +6,7 @@
 use super::digits::Digits;
 use super::total::Total;
 use super::window::{self, ROOM, Window};
+use crate::team::memory::fetch;
 
 /// Values that are split at a time.
 const CHUNK: usize = 128;
@@ -248,7 +249,7 @@ pub struct Rounded {
     /// For each bin the two words of each quantity's integer, low one first, then the count.
     cells: Vec<u64>,
     width: usize,
-    words: Words,
+    words: Vec<Words>,
     left_out: u64,
     touched: bool,
 }
@@ -265,7 +266,7 @@ impl Rounded {
             windows: quanta.iter().map(|&quantum| Window::at(quantum)).collect(),
             cells: vec![0; bins * width],
             width,
-            words: Words::new(),
+            words: vec![Words::new(); quanta.len()],
             left_out: 0,
             touched: false,
         }
@@ -281,19 +282,37 @@ impl Rounded {
         self.touched = true;
         for start in (0..bins.len()).step_by(CHUNK) {
             let end = (start + CHUNK).min(bins.len());
-            for (quantity, values) in values.iter().enumerate() {
-                self.add_chunk(quantity, &bins[start..end], &values[start..end]);
-            }
+            // Bins lie anywhere: ask for all of them before the first is added to.
             for &bin in &bins[start..end] {
-                self.cells[bin as usize * self.width + 2 * self.windows.len()] += 1;
+                fetch(&self.cells[bin as usize * self.width]);
+            }
+            for (quantity, values) in values.iter().enumerate() {
+                self.split(quantity, &values[start..end]);
+            }
+            for (index, &bin) in bins[start..end].iter().enumerate() {
+                let first = bin as usize * self.width;
+                let cells = &mut self.cells[first..first + self.width];
+                let (pairs, rest) = cells.as_chunks_mut::<2>();
+                let mut pairs = pairs.iter_mut();
+                for (words, cell) in self.words.iter().zip(&mut pairs) {
+                    let held = i128::from(cell[0]) | i128::from(cell[1] as i64) << 64;
+                    let (high, low) = (words.high[index], words.low[index]);
+                    let sum = held.wrapping_add((i128::from(high) << 52) + i128::from(low));
+                    (cell[0], cell[1]) = (sum as u64, (sum >> 64) as u64);
+                }
+                // The count follows the last pair.
+                match pairs.next() {
+                    Some(count) => count[0] += 1,
+                    None => rest[0] += 1,
+                }
             }
         }
     }
 
-    fn add_chunk(&mut self, quantity: usize, bins: &[u32], values: &[f64]) {
+    fn split(&mut self, quantity: usize, values: &[f64]) {
         let length = values.len();
         let window = self.windows[quantity];
-        let Words { high, low } = &mut self.words;
+        let Words { high, low } = &mut self.words[quantity];
         let fit = window::split_in(values, window, &mut high[..length], &mut low[..length]);
         if fit.misfit {
             for (index, value) in values.iter().enumerate() {
@@ -302,14 +321,6 @@ impl Rounded {
                     self.left_out += 1;
                 }
             }
-        }
-        for (index, &bin) in bins.iter().enumerate() {
-            let at = bin as usize * self.width + 2 * quantity;
-            let cell = &mut self.cells[at..at + 2];
-            let held = i128::from(cell[0]) | i128::from(cell[1] as i64) << 64;
-            let sum = held.wrapping_add((i128::from(high[index]) << 52) + i128::from(low[index]));
-            cell[0] = sum as u64;
-            cell[1] = (sum >> 64) as u64;
         }
     }
 
@@ -349,8 +360,9 @@ impl Rounded {
         let word = |index: usize| cells.get(index).copied().unwrap_or(0);
         let sum = i128::from(word(0)) | i128::from(word(1) as i64) << 64;
         // `as` rounds to nearest even. The power of two is applied in two steps, each of them a normal double.
-        let half = Window::at(quantum).low / 2;
-        sum as f64 * 2f64.powi(half) * 2f64.powi(Window::at(quantum).low - half)
+        let low = Window::at(quantum).low;
+        let power = |exponent: i32| f64::from_bits(((exponent + 1023) as u64) << 52);
+        sum as f64 * power(low / 2) * power(low - low / 2)
     }
 
     /// Forgets everything.

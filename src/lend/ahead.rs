@@ -1,6 +1,7 @@
 //! Asking for memory before it is needed, a little at a time, so that it arrives while something is computed.
 
 use super::View;
+use crate::team::memory::fetch_address;
 
 /// Bytes that a processor fetches at once.
 const LINE: usize = 64;
@@ -55,7 +56,7 @@ impl Ahead {
         while let Some(stretch) = self.stretches[..self.count].get_mut(self.current) {
             let now = wanted.min(stretch.left);
             for _ in 0..now {
-                fetch(stretch.next);
+                fetch_address(stretch.next);
                 stretch.next = stretch.next.wrapping_add(stretch.step);
             }
             stretch.left -= now;
@@ -66,17 +67,4 @@ impl Ahead {
             self.current += 1;
         }
     }
-}
-
-/// Asks for the cache line of an address; harmless whatever the address is.
-#[inline(always)]
-fn fetch(address: usize) {
-    #[cfg(target_arch = "x86_64")]
-    // SAFETY: a prefetch reads nothing that a program could see and never faults.
-    unsafe {
-        use std::arch::x86_64::{_MM_HINT_T0, _mm_prefetch};
-        _mm_prefetch::<_MM_HINT_T0>(address as *const i8);
-    }
-    #[cfg(not(target_arch = "x86_64"))]
-    let _ = address;
 }

@@ -79,20 +79,10 @@ vectorised! {
 /// # Panics
 /// When an element does not exist.
 pub(super) fn some_single_triples(from: &[f32], elements: &[u32], [x, y, z]: [&mut [f64]; 3]) {
-    const CHUNK: usize = 64;
     let from = from.as_chunks::<3>().0;
-    let mut picked = [[0f32; CHUNK]; 3];
-    let runs = x.chunks_mut(CHUNK).zip(y.chunks_mut(CHUNK)).zip(z.chunks_mut(CHUNK));
-    for (elements, ((x, y), z)) in elements.chunks(CHUNK).zip(runs) {
-        // Moved first and converted together, which is quicker than one by one.
-        let [px, py, pz] = &mut picked;
-        let into = px.iter_mut().zip(py).zip(pz);
-        for (&element, ((px, py), pz)) in elements.iter().zip(into) {
-            [*px, *py, *pz] = from[element as usize];
-        }
-        for (picked, run) in picked.iter().zip([x, y, z]) {
-            singles(&picked[..run.len()], run);
-        }
+    for (((&element, x), y), z) in elements.iter().zip(x).zip(y).zip(z) {
+        let vector = from[element as usize];
+        (*x, *y, *z) = (vector[0].into(), vector[1].into(), vector[2].into());
     }
 }
 

@@ -204,6 +204,7 @@ pub struct Work {
     pub ahead: Ahead,
     runs: Box<[Run; RUNS]>,
     indices: Box<[[u32; BLOCK]; INDICES]>,
+    rough_run: Box<[f32; BLOCK]>,
 }
 
 /// The parts of a [`Work`].
@@ -212,6 +213,8 @@ pub struct Parts<'a> {
     pub runs: [&'a mut [f64; BLOCK]; RUNS],
     /// Runs of whole numbers.
     pub indices: [&'a mut [u32; BLOCK]; INDICES],
+    /// A run of rough numbers.
+    pub rough_run: &'a mut [f32; BLOCK],
     /// As [`Work::ahead`].
     pub ahead: &'a mut Ahead,
 }
@@ -222,6 +225,7 @@ impl Default for Work {
             ahead: Ahead::default(),
             runs: Box::new([Run::EMPTY; RUNS]),
             indices: Box::new([[0; BLOCK]; INDICES]),
+            rough_run: Box::new([0.0; BLOCK]),
         }
     }
 }
@@ -232,6 +236,7 @@ impl Work {
         Parts {
             runs: self.runs.each_mut().map(|run| &mut run.numbers),
             indices: self.indices.each_mut(),
+            rough_run: &mut self.rough_run,
             ahead: &mut self.ahead,
         }
     }

@@ -37,6 +37,8 @@ pub struct Sweep {
     pub needs: Vec<Vec<NeedState>>,
     /// Gauges that can measure the present species, with the fields they read; kept for its memory.
     ready: Vec<(usize, FieldSet)>,
+    /// All fields of the present pass; likewise.
+    order: Vec<Field>,
 }
 
 /// What a pass reads.
@@ -84,6 +86,7 @@ impl Sweep {
                 .map(|needs| vec![NeedState::default(); needs.len()])
                 .collect(),
             ready: Vec::with_capacity(plan.needs.len()),
+            order: Vec::with_capacity(Field::COUNT),
         })
     }
 
@@ -109,6 +112,7 @@ impl Sweep {
             gauges,
             moment,
             fields,
+            order: &self.order,
             ready: &self.ready,
         };
         if lot.count() <= SHARE || self.workers.len() == 1 {
@@ -170,6 +174,14 @@ impl Sweep {
                 self.ready.push((index, wanted));
             }
         }
+        let all = fields.in_blocks.with(fields.of_some);
+        self.order.clear();
+        self.order.extend(
+            FIELDS
+                .iter()
+                .map(|info| info.field)
+                .filter(|&field| all.has(field as usize)),
+        );
         fields
     }
 
@@ -203,6 +215,8 @@ struct Pass<'a> {
     moment: &'a Moment,
     /// Every field that some gauge reads.
     fields: Fields,
+    /// All of these fields.
+    order: &'a [Field],
     /// Gauges that have what they need, with the fields they read.
     ready: &'a [(usize, FieldSet)],
 }
@@ -217,14 +231,6 @@ impl Pass<'_> {
         }
     }
 
-    fn views(&self, fields: FieldSet) -> impl Iterator<Item = (Field, &crate::lend::View)> {
-        FIELDS
-            .iter()
-            .map(|info| info.field)
-            .filter(move |&field| fields.has(field as usize))
-            .filter_map(|field| Some((field, self.lot.view(field)?)))
-    }
-
     fn measure_block(&self, start: usize, length: usize, worker: &mut Worker) {
         let Worker {
             sample,
@@ -233,13 +239,14 @@ impl Pass<'_> {
             work,
         } = worker;
         let Fields {
-            in_blocks,
-            of_some,
-            roughly,
+            in_blocks, roughly, ..
         } = self.fields;
         buffers.begin(length);
         work.ahead.clear();
-        for (field, view) in self.views(in_blocks.with(of_some).with(roughly)) {
+        for &field in self.order {
+            let Some(view) = self.lot.view(field) else {
+                continue;
+            };
             let index = field as usize;
             // While this block is measured the next one arrives.
             work.ahead.add(view, start + length, BLOCK);

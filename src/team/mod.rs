@@ -9,6 +9,7 @@ pub mod cells;
 pub mod crew;
 pub mod float;
 pub mod library;
+pub mod memory;
 #[cfg(feature = "mpi")]
 pub mod mpi;
 pub mod thread;

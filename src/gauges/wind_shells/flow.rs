@@ -75,10 +75,14 @@ impl Rough {
     }
 
     /// Marks elements that may lie in the shells, a bit each. What stands beyond the elements is marked at random.
-    pub fn mark(&self, positions: [&[f32; BLOCK]; 3], marks: &mut [u64; BLOCK / MARKS]) {
-        let mut squares = [0.0; BLOCK];
-        rough_squares(positions, self, &mut squares);
-        rough_marks(&squares, self.squares, marks);
+    pub fn mark(
+        &self,
+        positions: [&[f32; BLOCK]; 3],
+        room: &mut [f32; BLOCK],
+        marks: &mut [u64; BLOCK / MARKS],
+    ) {
+        rough_squares(positions, self, room);
+        rough_marks(room, self.squares, marks);
     }
 }
 
@@ -104,30 +108,21 @@ fn rough_squares([x, y, z]: [&[f32; BLOCK]; 3], rough: &Rough, squares: &mut [f3
 
 fn rough_marks(
     squares: &[f32; BLOCK],
-    bounds: (f32, f32),
+    (low, high): (f32, f32),
     marks: &mut [u64; BLOCK / MARKS],
 ) {
-    let mut flags = [0; BLOCK];
-    flag(squares, bounds, &mut flags);
-    for (word, flags) in marks.iter_mut().zip(flags.as_chunks::<MARKS>().0) {
+    /// Multiplied with eight bytes of 0 or 1 it moves them together as the bits of the topmost byte.
+    const TOGETHER: u64 = 0x0102_0408_1020_4080;
+    for (word, squares) in marks.iter_mut().zip(squares.as_chunks::<MARKS>().0) {
+        let mut flags = [0; MARKS];
+        for (square, flag) in squares.iter().zip(&mut flags) {
+            *flag = u8::from((*square >= low) & (*square <= high));
+        }
         *word = 0;
         for (place, flags) in flags.as_chunks::<8>().0.iter().enumerate() {
-            // Moves the lowest bits of eight bytes next to each other.
-            const TOGETHER: u64 = 0x0102_0408_1020_4080;
             let bits = u64::from_le_bytes(*flags).wrapping_mul(TOGETHER) >> 56;
             *word |= bits << (8 * place);
         }
-    }
-}
-
-#[multiversion(targets(
-    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
-    "x86_64+avx+avx2",
-    "aarch64+neon"
-))]
-fn flag(squares: &[f32; BLOCK], (low, high): (f32, f32), flags: &mut [u8; BLOCK]) {
-    for (square, flag) in squares.iter().zip(flags) {
-        *flag = u8::from((*square >= low) & (*square <= high));
     }
 }
 

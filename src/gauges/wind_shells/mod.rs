@@ -77,6 +77,9 @@ impl Shells {
 
 struct WindShells {
     stations: Vec<Station>,
+    /// Their positions and velocities, close together.
+    places: Vec<[f64; 3]>,
+    velocities: Vec<[f64; 3]>,
     volume: Volume,
     /// In cm, physical or comoving.
     edges: Vec<f64>,
@@ -119,6 +122,8 @@ pub(super) fn build(section: &mut Section, config: &Config, plan: &mut Plan) -> 
         (table, plan.rounded_bins(bins, quanta(config)))
     };
     Box::new(WindShells {
+        places: stations.iter().map(|station| station.position).collect(),
+        velocities: stations.iter().map(|station| station.velocity).collect(),
         stations,
         volume: config.volume,
         edges,
@@ -189,6 +194,7 @@ impl WindShells {
         let Parts {
             runs: [dx, dy, dz, ..],
             indices: [elements, owners, _],
+            rough_run,
             ahead,
         } = work.parts();
         let ends = (shells.edges[0], shells.edges[shells.fitting()]);
@@ -199,7 +205,7 @@ impl WindShells {
         let count = match rough {
             Some((geometry, runs)) => {
                 let mut marks = [0; BLOCK / flow::MARKS];
-                geometry.mark(runs, &mut marks);
+                geometry.mark(runs, rough_run, &mut marks);
                 ahead.some();
                 flow::list(&marks, block.len(), elements)
             }
@@ -228,31 +234,30 @@ impl WindShells {
     /// Measures the elements of a block around those stations that each of them is near.
     fn measure_around_many(&self, block: &Block, work: &mut Work, sample: &mut Sample) {
         let positions = block.vector(Field::Position);
-        let [x, y, z] = positions;
+        let [x, y, z] = [0, 1, 2].map(|axis| block.run(Field::Position, axis));
         let mut cells = [0; BLOCK];
         self.grid.cells_of(positions, &mut cells[..block.len()]);
-        let mut pairs = 0;
-        for (element, &cell) in cells[..block.len()].iter().enumerate() {
-            for &owner in self.grid.near(cell) {
-                if pairs == BLOCK {
-                    self.measure_candidates(block, pairs, work, sample);
-                    pairs = 0;
-                }
-                let place = &self.stations[owner as usize].position;
-                let Parts {
-                    runs: [dx, dy, dz, ..],
-                    indices: [elements, owners, _],
-                    ..
-                } = work.parts();
-                dx[pairs] = x[element] - place[0];
-                dy[pairs] = y[element] - place[1];
-                dz[pairs] = z[element] - place[2];
-                elements[pairs] = element as u32;
-                owners[pairs] = owner;
-                pairs += 1;
+        work.ahead.some();
+        let mut next = stations::Next::default();
+        while next.element < block.len() {
+            let Parts {
+                runs: [dx, dy, dz, ..],
+                indices: [elements, owners, _],
+                ..
+            } = work.parts();
+            let pairs = self
+                .grid
+                .pairs(&cells[..block.len()], &mut next, elements, owners);
+            for (index, (&element, &owner)) in elements.iter().zip(&*owners).enumerate().take(pairs)
+            {
+                let place = &self.places[owner as usize];
+                let element = element as usize % BLOCK;
+                dx[index] = x[element] - place[0];
+                dy[index] = y[element] - place[1];
+                dz[index] = z[element] - place[2];
             }
+            self.measure_candidates(block, pairs, work, sample);
         }
-        self.measure_candidates(block, pairs, work, sample);
     }
 
     /// Measures those pairs of an element and a station that are within reach of each other. They stand in the first
@@ -268,6 +273,7 @@ impl WindShells {
             runs: [dx, dy, dz, squares, ..],
             indices: [elements, owners, _],
             ahead,
+            ..
         } = work.parts();
         ahead.some();
         let runs = [&mut dx[..pairs], &mut dy[..pairs], &mut dz[..pairs]];
@@ -297,6 +303,7 @@ impl WindShells {
             runs: [dx, dy, dz, squares, vx, vy, vz, masses, fluxes, ..],
             indices: [elements, owners, bins],
             ahead,
+            ..
         } = work.parts();
         ahead.some();
         block.gather_vectors(
@@ -312,7 +319,7 @@ impl WindShells {
             drift = [0.0; 3];
             let bins_of_each = (self.edges.len() as u32 - 1) * DIRECTIONS as u32;
             for (index, owner) in owners[..count].iter_mut().enumerate() {
-                let velocity = &self.stations[*owner as usize].velocity;
+                let velocity = &self.velocities[*owner as usize];
                 vx[index] -= velocity[0];
                 vy[index] -= velocity[1];
                 vz[index] -= velocity[2];

@@ -2,12 +2,16 @@
 //! shells reach into them, so that an element asks one cell and not every station.
 
 use super::flow::Periods;
+use crate::sweep::BLOCK;
+use crate::team::memory::fetch;
 use multiversion::multiversion;
 
 /// Most cells along an axis.
 const MOST_CELLS: usize = 128;
 /// Most places in all lists together, for each station: beyond it cells are made larger.
 const PLACES: usize = 64;
+/// Stations that an element is near, in most cases at most.
+const USUAL: usize = 4;
 /// Distances are rounded: cells and shells reach farther by this part.
 const MARGIN: f64 = 1e-9;
 
@@ -34,6 +38,15 @@ pub(super) struct Grid {
     /// Where each cell's list begins in `lists`; one more than there are cells, and one for elements outside all.
     starts: Vec<u32>,
     lists: Vec<u32>,
+}
+
+/// Where to go on with pairs.
+#[derive(Default)]
+pub(super) struct Next {
+    /// The first element that is not told in full.
+    pub element: usize,
+    /// How many of its stations are.
+    taken: usize,
 }
 
 /// One axis of a cell index, as the loop needs it.
@@ -109,7 +122,8 @@ impl Grid {
             let total = starts[cells];
             starts[cells + 1] = total;
             lists.clear();
-            lists.resize(total as usize, 0);
+            // A few more than there are, so that as many as usual can be read at once.
+            lists.resize(total as usize + USUAL, 0);
             // Each start is moved to the end of its list while it is filled, and back afterwards.
             for (number, station) in stations.iter().enumerate() {
                 self.each_cell(station.position, |cell| {
@@ -197,13 +211,61 @@ impl Grid {
             }
         });
         find_cells(positions, &axes, into);
+        // Cells lie anywhere: ask for all of them, and then for all of their lists, before the first is looked at.
+        let starts = || into.iter().map(|&cell| &self.starts[cell as usize]);
+        starts().for_each(fetch);
+        starts().for_each(|&start| fetch(&self.lists[start as usize]));
     }
 
     /// The stations that elements of a cell may be near.
     #[inline]
-    pub fn near(&self, cell: u32) -> &[u32] {
+    fn near(&self, cell: u32) -> &[u32] {
         let cell = cell as usize;
         &self.lists[self.starts[cell] as usize..self.starts[cell + 1] as usize]
+    }
+
+    /// Writes down elements, of which `cells` are the cells, with the stations that each may be near, until all are
+    /// told or there is no more room. Returns how many pairs there are, and leaves in `next` where to go on.
+    pub fn pairs(
+        &self,
+        cells: &[u32],
+        next: &mut Next,
+        elements: &mut [u32; BLOCK],
+        owners: &mut [u32; BLOCK],
+    ) -> usize {
+        let mut pairs = 0;
+        while let Some(&cell) = cells.get(next.element) {
+            let start = self.starts[cell as usize] as usize;
+            let count = self.starts[cell as usize + 1] as usize - start;
+            let room = elements[pairs..].first_chunk_mut::<USUAL>();
+            let others = owners[pairs..].first_chunk_mut::<USUAL>();
+            let near = self.lists[start..].first_chunk::<USUAL>();
+            if let (Some(room), Some(others), Some(near)) = (room, others, near)
+                && count <= USUAL
+                && next.taken == 0
+            {
+                // As many as there usually are at most, without a branch on how many there are: what is too much is
+                // written over next.
+                room.fill(next.element as u32);
+                *others = *near;
+                pairs += count;
+            } else {
+                let near = &self.near(cell)[next.taken..];
+                let fits = near.len().min(BLOCK - pairs);
+                elements[pairs..pairs + fits].fill(next.element as u32);
+                owners[pairs..pairs + fits].copy_from_slice(&near[..fits]);
+                pairs += fits;
+                if fits < near.len() {
+                    next.taken += fits;
+                    return pairs;
+                }
+            }
+            *next = Next {
+                element: next.element + 1,
+                taken: 0,
+            };
+        }
+        pairs
     }
 }
 
@@ -299,6 +361,17 @@ mod tests {
                     prop_assert!(listed == 1 || square.sqrt() > reach, "{:?} {:?}", element, station);
                 }
             }
+            // The pairs are those of the lists, however often there is no more room.
+            let mut told = Vec::new();
+            let mut next = Next::default();
+            while next.element < cells.len() {
+                let (mut of, mut owners) = ([0; BLOCK], [0; BLOCK]);
+                let pairs = grid.pairs(&cells, &mut next, &mut of, &mut owners);
+                told.extend(of.into_iter().zip(owners).take(pairs));
+            }
+            let listed = cells.iter().enumerate()
+                .flat_map(|(element, &cell)| grid.near(cell).iter().map(move |&owner| (element as u32, owner)));
+            prop_assert_eq!(told, listed.collect::<Vec<_>>());
         }
     }
 }
