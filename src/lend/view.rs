@@ -340,10 +340,14 @@ impl View {
         let [x, y, z] = runs;
         let base = self.base(0);
         let largest = match self.shape.scalar {
-            Scalar::F32 if triples && let Some(numbers) = packed(base, size, 3 * start, 3 * length) => {
+            Scalar::F32
+                if triples && let Some(numbers) = packed(base, size, 3 * start, 3 * length) =>
+            {
                 convert::rough_single_triples(numbers, x, y, z)
             }
-            Scalar::F64 if triples && let Some(numbers) = packed(base, size, 3 * start, 3 * length) => {
+            Scalar::F64
+                if triples && let Some(numbers) = packed(base, size, 3 * start, 3 * length) =>
+            {
                 convert::rough_double_triples(numbers, x, y, z)
             }
             _ => [x, y, z]

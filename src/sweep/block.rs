@@ -378,7 +378,9 @@ impl Buffers {
             loaded: self.loaded,
             lot,
             start,
-            rough: self.rough_field.map(|(field, largest)| (field, &*self.rough, largest)),
+            rough: self
+                .rough_field
+                .map(|(field, largest)| (field, &*self.rough, largest)),
             length: self.length,
             values: &self.values,
             identities: &self.identities,

@@ -39,7 +39,9 @@ pub(super) struct Rough {
     lengths: [f32; 3],
     inverses: [f32; 3],
     centre: [f32; 3],
-    /// Squares beyond these are of elements that lie outside, whatever the rounding.
+    /// Turns distances into parts of the outermost radius, so that squares are of a size whatever the unit is.
+    per_radius: f32,
+    /// Squares of such parts; beyond these are elements that lie outside, whatever the rounding.
     squares: (f32, f32),
 }
 
@@ -58,15 +60,17 @@ impl Rough {
         let all = centre.into_iter().chain(periods.lengths);
         let size = all.fold(f64::from(largest), |sum, number| sum + number.abs());
         let blur = size * 2f64.powi(-20);
-        if blur.is_nan() || blur > 0.05 * outer || outer > 1e15 || outer < 1e-12 {
+        let is_in_range = (1e-30..1e30).contains(&outer) && size < 1e30;
+        if !is_in_range || blur > 0.05 * outer {
             return None;
         }
         const MARGIN: f64 = 1e-5;
-        let (low, high) = ((inner - blur).max(0.0), outer + blur);
+        let (low, high) = ((inner - blur).max(0.0) / outer, 1.0 + blur / outer);
         Some(Rough {
             lengths: periods.lengths.map(|length| length as f32),
             inverses: periods.inverses.map(|inverse| inverse as f32),
             centre: centre.map(|place| place as f32),
+            per_radius: (1.0 / outer) as f32,
             squares: (
                 (low * low * (1.0 - MARGIN)) as f32,
                 (high * high * (1.0 + MARGIN)) as f32,
@@ -95,8 +99,9 @@ fn rough_squares([x, y, z]: [&[f32; BLOCK]; 3], rough: &Rough, squares: &mut [f3
     /// As [`WHOLE`], for singles.
     const WHOLE: f32 = 12_582_912.0;
     let (length, inverse, centre) = (rough.lengths, rough.inverses, rough.centre);
+    let per_radius = rough.per_radius;
     let nearest = |distance: f32, axis: usize| {
-        distance - length[axis] * ((distance * inverse[axis] + WHOLE) - WHOLE)
+        (distance - length[axis] * ((distance * inverse[axis] + WHOLE) - WHOLE)) * per_radius
     };
     for (((x, y), z), square) in x.iter().zip(y).zip(z).zip(squares) {
         let dx = nearest(x - centre[0], 0);
@@ -106,11 +111,7 @@ fn rough_squares([x, y, z]: [&[f32; BLOCK]; 3], rough: &Rough, squares: &mut [f3
     }
 }
 
-fn rough_marks(
-    squares: &[f32; BLOCK],
-    (low, high): (f32, f32),
-    marks: &mut [u64; BLOCK / MARKS],
-) {
+fn rough_marks(squares: &[f32; BLOCK], (low, high): (f32, f32), marks: &mut [u64; BLOCK / MARKS]) {
     /// Multiplied with eight bytes of 0 or 1 it moves them together as the bits of the topmost byte.
     const TOGETHER: u64 = 0x0102_0408_1020_4080;
     for (word, squares) in marks.iter_mut().zip(squares.as_chunks::<MARKS>().0) {
@@ -262,4 +263,57 @@ pub(super) fn find_bins(
         outside |= u64::from((radius < low) | (radius >= high));
     }
     outside == 0
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use proptest::prelude::*;
+
+    proptest! {
+        /// Whoever lies in the shells is marked, wherever the station, whatever the unit of length.
+        #[test]
+        fn no_element_in_the_shells_is_left_out_by_rounding(
+            places in proptest::collection::vec(proptest::array::uniform3(-1.5f64..2.5), BLOCK),
+            centre in proptest::array::uniform3(-0.5f64..1.5),
+            inner in 0.0f64..0.3,
+            width in 1e-4f64..0.2,
+            power in -25i32..25,
+            periodic in proptest::array::uniform3(proptest::bool::ANY),
+        ) {
+            let unit = 10f64.powi(power);
+            let (inner, outer) = (inner * unit, (inner + width) * unit);
+            let centre = centre.map(|place| place * unit);
+            let lengths = [1.0, 1.1, 1.3].map(|length| length * unit);
+            let periods = Periods::new(std::array::from_fn(|axis| periodic[axis].then_some(lengths[axis])));
+            // Some exactly on an edge, as far as doubles go, in the direction of an axis.
+            let place = |index: usize, axis: usize| match (index % 8, axis == index / 8 % 3) {
+                (0, true) => centre[axis] + outer * (1.0 - 1e-15),
+                (1, true) => centre[axis] - inner,
+                (0 | 1, false) => centre[axis],
+                _ => places[index][axis] * unit,
+            };
+            let runs: [[f64; BLOCK]; 3] = std::array::from_fn(|axis| std::array::from_fn(|index| place(index, axis)));
+            let rough = runs.map(|run| run.map(|number| number as f32));
+            let largest = rough.iter().flatten().fold(0f32, |most, number| most.max(number.abs()));
+            if let Some(geometry) = Rough::new(&periods, centre, (inner, outer), largest) {
+                let mut marks = [0; BLOCK / MARKS];
+                geometry.mark([&rough[0], &rough[1], &rough[2]], &mut [0.0; BLOCK], &mut marks);
+                let mut listed = [0; BLOCK];
+                let count = list(&marks, BLOCK, &mut listed);
+                let [x, y, z] = &runs;
+                for (index, ((x, y), z)) in x.iter().zip(y).zip(z).enumerate() {
+                    let element = [x, y, z];
+                    let d: [f64; 3] = std::array::from_fn(|axis| {
+                        nearest_image(element[axis] - centre[axis], periods.lengths[axis], periods.inverses[axis])
+                    });
+                    let r = (d[0] * d[0] + d[1] * d[1] + d[2] * d[2]).sqrt();
+                    let is_listed = listed[..count].contains(&(index as u32));
+                    prop_assert!(is_listed || r < inner || r >= outer, "{index}: {r} {inner} {outer}");
+                }
+            } else {
+                prop_assert!(width < 1e-3 || inner + outer < 0.5 * unit);
+            }
+        }
+    }
 }
