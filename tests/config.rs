@@ -1,6 +1,8 @@
 //! What a config promises: all it states comes out as stated, and nothing wrong in it goes unnoticed.
 
 use limnograph::config::{Config, ImfName, Positions, Problem, Quantity};
+use limnograph::gauges::{self, Plan};
+use limnograph::series::schema::Table;
 use limnograph::units::Expansion;
 use limnograph::units::constants::{KILOPARSEC, MEGAPARSEC, SOLAR_MASS, YEAR};
 
@@ -632,4 +634,103 @@ fn files_from_other_systems_are_read_alike() {
             .collect()
     };
     assert_eq!(lines(&wrong), lines(&wrong.replace('\n', "\r\n")));
+}
+
+/// The config with these lines for the stations of the wind shells, which begin on line 5 of their section.
+fn with_stations(stations: &str) -> Result<Vec<String>, String> {
+    let shells = "[gauges.wind_shells]\nlengths = \"physical\"\nunit = \"kpc\"\nedges = [10, 20]\n";
+    let text = examples()[0].replacen("mass_budget = true", &format!("{shells}{stations}"), 1);
+    let section = 1 + text
+        .lines()
+        .take_while(|line| !line.contains("wind_shells"))
+        .count();
+    let config = parse(&text);
+    let mut plan = Plan::new(vec![Table {
+        name: "run".to_string(),
+        description: String::new(),
+        columns: Vec::new(),
+    }]);
+    match gauges::build(&config, &mut plan) {
+        Ok(_) => Ok(plan.tables.into_iter().map(|table| table.name).collect()),
+        // Lines are told from the section on, which has the first.
+        Err(problems) => {
+            let told = problems.into_iter().map(|mut problem| {
+                problem.line = problem.line + 1 - section;
+                format!("{problem}\n")
+            });
+            Err(told.collect())
+        }
+    }
+}
+
+#[test]
+fn what_is_wrong_with_stations_is_explained() {
+    const ONE: &str = "station = { position = [1, 2, 3] }\n";
+    const TWO: &str = "stations = [\n  { position = [1, 2, 3] },\n  { position = [4, 5, 6] },\n]\n";
+    for right in [ONE, TWO] {
+        assert!(with_stations(right).is_ok(), "{right}");
+    }
+    for (wrong, expected) in [
+        (
+            format!("{ONE}{TWO}"),
+            "6: [gauges.wind_shells] stations: expected either one `station` or a list of `stations`",
+        ),
+        (
+            "stations = []\n".to_string(),
+            "5: [gauges.wind_shells] stations: expected at least one station",
+        ),
+        (
+            TWO.replace("position =", "name = \"here\", position ="),
+            "5: [gauges.wind_shells] stations: found two stations named `here`; expected a name for each",
+        ),
+        // Left out, the name is the station's number, from 1 on.
+        (
+            TWO.replace("position = [1", "name = \"station 2\", position = [1"),
+            "5: [gauges.wind_shells] stations: found two stations named `station 2`; expected a name for each",
+        ),
+        (
+            TWO.replace("position = [4", "name = \"station 1\", position = [4"),
+            "5: [gauges.wind_shells] stations: found two stations named `station 1`; expected a name for each",
+        ),
+        (
+            TWO.replace("position = [4, 5, 6]", "name = \"there\""),
+            "7: [gauges.wind_shells.stations] the key `position` is missing; expected a list of numbers",
+        ),
+        (
+            TWO.replace("[4, 5, 6]", "[4, 5]"),
+            "7: [gauges.wind_shells.stations] position: found 2 numbers; expected three: x, y, z",
+        ),
+        (
+            "station = { name = \"there\" }\n".to_string(),
+            "5: [gauges.wind_shells.station] the key `position` is missing; expected a list of numbers",
+        ),
+        (
+            String::new(),
+            "1: [gauges.wind_shells] the key `station` is missing; expected a table",
+        ),
+    ] {
+        assert_eq!(
+            with_stations(&wrong).unwrap_err(),
+            format!("limnograph.toml:{expected}\n"),
+            "{wrong}"
+        );
+    }
+}
+
+#[test]
+fn beyond_64_stations_rows_tell_of_all_together() {
+    let stations = |count: usize| {
+        format!(
+            "stations = [{}]\n",
+            "{ position = [1, 2, 3] },".repeat(count)
+        )
+    };
+    assert_eq!(
+        with_stations(&stations(64)).unwrap(),
+        ["run", "wind_shells"]
+    );
+    assert_eq!(
+        with_stations(&stations(65)).unwrap(),
+        ["run", "wind_shells_summary"]
+    );
 }

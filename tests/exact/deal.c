@@ -2,11 +2,11 @@
  * A host that makes the same particles in every run, and deals them out, orders them and lays them in memory as it is
  * told:
  *
- *     deal SERIES EXPECTED THREADS structs|arrays f32|f64 turn|blocks|halves|odd SEED native|128|256|mixed
+ *     deal SERIES EXPECTED THREADS structs|arrays f32|f64 turn|blocks|halves|odd SEED native|128|256|mixed FROM-TO
  *
- * THREADS are the library's; SEED is that of the order (0: as they are made); the last word is the widest vector, in
- * bits, that the library may find (mixed: 128 on every other rank). EXPECTED is a file for how many numbers are
- * not finite, by column.
+ * THREADS are the library's; SEED is that of the order (0: as they are made); the next word is the widest vector, in
+ * bits, that the library may find (mixed: 128 on every other rank); FROM-TO are the stations, from number FROM to
+ * before number TO of them. EXPECTED is a file for how many numbers are not finite, by column.
  *
  * Every number is a small integer times a power of two that float and double both hold, and made by integers alone, so
  * that hosts built in any way make the same. Built with -DALONE it needs no MPI; with -DTRAPS floating-point exceptions
@@ -63,7 +63,14 @@ static const char config[] =
     "lengths = \"physical\"\n"
     "unit = \"kpc\"\n"
     "shells = { from = 8, to = 72, count = 8, spacing = \"linear\" }\n"
-    "station = { name = \"corner\", position = [2, 1020, 5], velocity = [10, -20, 30] }\n";
+    "stations = [\n";
+
+#define STATIONS 80 /* more than have rows of their own */
+#define NAMED 3
+/* Whole numbers. The first lies near the corner of the box and moves, the second is within the shells of the first; both
+   reach over the corner. The others are made. */
+static int place_of[STATIONS][3] = {{2, 1020, 5}, {1003, 10, 1012}, {300, 700, 500}};
+static int motion_of[STATIONS][3] = {{10, -20, 30}, {0, 0, 0}, {-7, 0, 64}};
 
 static int rank, ranks = 1, failures;
 
@@ -121,16 +128,44 @@ enum { STAR_MASS, STAR_BIRTH_MASS, STAR_BIRTH_TIME, STAR_FIELDS };
 enum { HOLE_MASS, HOLE_SUBGRID, HOLE_RATE, HOLE_FIELDS };
 #define FIELDS GAS_FIELDS
 
+static char config_of_run[sizeof config + 100 * STATIONS];
+
+/* The config with the stations from one number to before another. */
+static const char *write_config(int from, int to)
+{
+    static const char *const names[NAMED] = {"corner", "beside", "aside"};
+    size_t length = (size_t)snprintf(config_of_run, sizeof config_of_run, "%s", config);
+    for (int s = NAMED; s < STATIONS; s++)
+        for (int k = 0; k < 3; k++) {
+            uint64_t word = draw(10, 0, (uint64_t)s, k);
+            place_of[s][k] = (int)(word % EDGE);
+            motion_of[s][k] = s % 4 ? (int)(word >> 32 & 127) - 64 : 0;
+        }
+    for (int s = from; s < to; s++) {
+        const int *p = place_of[s], *v = motion_of[s];
+        char name[20] = "";
+        if (s < NAMED)
+            snprintf(name, sizeof name, "%s", names[s]);
+        else
+            snprintf(name, sizeof name, "made %d", s);
+        length += (size_t)snprintf(config_of_run + length, sizeof config_of_run - length,
+                                   "{ name = \"%s\", position = [%d, %d, %d], velocity = [%d, %d, %d] },\n", name, p[0],
+                                   p[1], p[2], v[0], v[1], v[2]);
+    }
+    snprintf(config_of_run + length, sizeof config_of_run - length, "]\n");
+    return config_of_run;
+}
+
 static double gas[GAS][FIELDS], star[STARS][FIELDS], hole[HOLES][FIELDS], dark[DARK][FIELDS];
 static uint64_t hole_id[HOLES];
-static const int station[3] = {2, 1020, 5};
 
 static void make_particles(int step)
 {
     for (uint64_t i = 0; i < GAS; i++) {
+        /* Half of them near a station, most of these over the corner of the box; units of 2^-13. */
+        const int *station = place_of[i % 8 == 7 ? 2 : i % 8 == 5];
         for (int k = 0; k < 3; k++) {
             uint64_t word = draw(1, step, i, k);
-                /* Half of them near the station, over the corner of the box; units of 2^-13. */
             int64_t place = (int64_t)(word >> 41);
             if (i % 2) place = ((int64_t)station[k] << 13) + (int64_t)(word >> 43) - (1 << 20);
             if (i % 97 == 1) place = (int64_t)station[k] << 13;                  /* where the station is */
@@ -142,9 +177,9 @@ static void make_particles(int step)
             gas[i][GAS_X + k] = number_of(bits_of(place, -13));
             gas[i][GAS_VX + k] = number_of(bits_of((int64_t)(draw(2, step, i, k) >> 44) - (1 << 19), -10));
         }
-        /* Some masses are 2^60 times smaller or larger than others, some zero. */
+        /* Some masses are 2^100 times smaller than others, some 2^20 times larger, some zero. */
         uint64_t word = draw(3, step, i, 0);
-        int power = i % 13 ? (int)(word % 7) : (int)(word % 121) - 60;
+        int power = i % 13 ? (int)(word % 7) : (int)(word % 121) - 100;
         gas[i][GAS_MASS] = number_of(i % 211 == 5 ? 0 : bits_of((int64_t)(1 + (word >> 41)), power - 22));
         gas[i][GAS_RATE] = number_of(i % 3 ? 0 : bits_of((int64_t)(draw(4, step, i, 0) >> 41), -26));
     }
@@ -343,9 +378,10 @@ static void write_expected(const char *path)
 
 int main(int argc, char **argv)
 {
-    if (argc != 9) {
+    int from = 0, to = 0;
+    if (argc != 10 || sscanf(argv[9], "%d-%d", &from, &to) != 2 || from < 0 || from >= to || to > STATIONS) {
         fprintf(stderr, "usage: deal SERIES EXPECTED THREADS structs|arrays f32|f64 turn|blocks|halves|odd SEED "
-                        "native|128|256|mixed\n");
+                        "native|128|256|mixed FROM-TO\n");
         return 2;
     }
 #ifndef ALONE
@@ -367,7 +403,7 @@ int main(int argc, char **argv)
 
     limno_options options = LIMNO_OPTIONS_INIT;
     limno_run *run = NULL;
-    options.config_text = config, options.threads = atoi(argv[3]);
+    options.config_text = write_config(from, to), options.threads = atoi(argv[3]);
 #ifdef ALONE
     limno_status opened = limno_open(LIMNO_VERSION, "deal", argv[1], &options, &run);
 #else
