@@ -706,7 +706,7 @@ fn what_is_wrong_with_stations_is_explained() {
         ),
         (
             String::new(),
-            "1: [gauges.wind_shells] the key `station` is missing; expected a table",
+            "1: [gauges.wind_shells] the key `station` is missing; expected a table, or a list of tables `stations`",
         ),
     ] {
         assert_eq!(

@@ -255,7 +255,8 @@ pub struct Rounded {
 }
 
 impl Rounded {
-    /// Empty bins; each quantity has a quantum of 2^q, and its values may be up to 2^(q + 103).
+    /// Empty bins; each quantity has a quantum of 2^q, and its values may be up to 2^(q + 103). A sum holds 2^24 of the
+    /// largest before it would wrap.
     pub fn new(bins: usize, quanta: &[i32]) -> Rounded {
         // A bin within one cache line where that costs no more than it gains.
         let width = match 2 * quanta.len() + 1 {

@@ -111,7 +111,7 @@ pub(super) fn of_all_stations() -> Vec<Column> {
         (
             "mass_inflow_rate",
             "solMass.yr**-1",
-            "mass of gas that moves inward through the shell per time",
+            "mass of gas that moves inward through the shell per time, as a positive number",
         ),
         ("gas_mass", "solMass", "mass of gas in the shell"),
     ] {

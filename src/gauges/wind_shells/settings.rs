@@ -17,7 +17,11 @@ pub(super) fn stations(section: &mut Section) -> Vec<Station> {
             let _ = section.section("station").optional();
             section.sections("stations").or(Vec::new())
         }
-        _ => section.section("station").required().into_iter().collect(),
+        (true, false) => section.section("station").required().into_iter().collect(),
+        (false, false) => {
+            section.missing("station", "a table, or a list of tables `stations`");
+            Vec::new()
+        }
     };
     let is_list = section.has("stations");
     if is_list && sections.is_empty() && !section.has_problems() {
