@@ -34,59 +34,73 @@ fn nearest_image(distance: f64, length: f64, inverse: f64) -> f64 {
 /// Elements that one word of marks tells of.
 pub(super) const MARKS: usize = 64;
 
-/// The geometry for rough positions.
+/// The geometry of one station's shells for rough positions.
+#[derive(Default)]
 pub(super) struct Rough {
     lengths: [f32; 3],
     inverses: [f32; 3],
     centre: [f32; 3],
     /// Turns distances into parts of the outermost radius, so that squares are of a size whatever the unit is.
     per_radius: f32,
-    /// Squares of such parts; beyond these are elements that lie outside, whatever the rounding.
-    squares: (f32, f32),
+    /// The same in double precision.
+    exactly_per_radius: f64,
+    /// The innermost radius as such a part.
+    inner: f64,
+    /// Numbers of the size of the centre and the box together.
+    size: f64,
 }
 
 impl Rough {
-    /// The geometry of shells from `inner` to `outer` around a place, for positions with components up to `largest`.
-    /// None where rounding to singles would blur the shells.
-    ///
-    /// Each of the roundings on the way to a distance is at most 2^-24 of a number that is no larger than
-    /// position, centre and box together, and there are fewer than eight of them on an axis.
-    pub fn new(
-        periods: &Periods,
-        centre: [f64; 3],
-        (inner, outer): (f64, f64),
-        largest: f32,
-    ) -> Option<Rough> {
+    /// The geometry of shells from `inner` to `outer` around a place.
+    pub fn new(periods: &Periods, centre: [f64; 3], (inner, outer): (f64, f64)) -> Rough {
+        let is_in_range = (1e-30..1e30).contains(&outer);
         let all = centre.into_iter().chain(periods.lengths);
-        let size = all.fold(f64::from(largest), |sum, number| sum + number.abs());
-        let blur = size * 2f64.powi(-20);
-        let is_in_range = (1e-30..1e30).contains(&outer) && size < 1e30;
-        if !is_in_range || blur > 0.05 * outer {
-            return None;
-        }
-        const MARGIN: f64 = 1e-5;
-        let (low, high) = ((inner - blur).max(0.0) / outer, 1.0 + blur / outer);
-        Some(Rough {
+        Rough {
             lengths: periods.lengths.map(|length| length as f32),
             inverses: periods.inverses.map(|inverse| inverse as f32),
             centre: centre.map(|place| place as f32),
             per_radius: (1.0 / outer) as f32,
-            squares: (
-                (low * low * (1.0 - MARGIN)) as f32,
-                (high * high * (1.0 + MARGIN)) as f32,
-            ),
-        })
+            exactly_per_radius: 1.0 / outer,
+            inner: inner / outer,
+            // Infinite where singles cannot tell anything.
+            size: if is_in_range {
+                all.fold(0.0, |sum, number| sum + number.abs())
+            } else {
+                f64::INFINITY
+            },
+        }
+    }
+
+    /// The squares of parts of the outermost radius beyond which are elements that lie outside, whatever the
+    /// rounding, for positions with components up to `largest`. None where rounding to singles would blur the shells.
+    ///
+    /// Each of the roundings on the way to a distance is at most 2^-24 of a number that is no larger than
+    /// position, centre and box together, and there are fewer than eight of them on an axis.
+    pub fn bounds(&self, largest: f32) -> Option<(f32, f32)> {
+        const MARGIN: f64 = 1e-5;
+        const ROUNDINGS: f64 = 1.0 / 1_048_576.0;
+        let size = self.size + f64::from(largest);
+        let blur = size * ROUNDINGS * self.exactly_per_radius;
+        if size > 1e30 || blur > 0.05 {
+            return None;
+        }
+        let (low, high) = ((self.inner - blur).max(0.0), 1.0 + blur);
+        Some((
+            (low * low * (1.0 - MARGIN)) as f32,
+            (high * high * (1.0 + MARGIN)) as f32,
+        ))
     }
 
     /// Marks elements that may lie in the shells, a bit each. What stands beyond the elements is marked at random.
     pub fn mark(
         &self,
         positions: [&[f32; BLOCK]; 3],
+        bounds: (f32, f32),
         room: &mut [f32; BLOCK],
         marks: &mut [u64; BLOCK / MARKS],
     ) {
         rough_squares(positions, self, room);
-        rough_marks(room, self.squares, marks);
+        rough_marks(room, bounds, marks);
     }
 }
 
@@ -147,19 +161,24 @@ pub(super) fn list(marks: &[u64; BLOCK / MARKS], length: usize, into: &mut [u32;
     count
 }
 
-/// Squared distances of elements from stations, of positions from which those of the stations have been subtracted.
+/// Positions relative to a place, the nearest periodic images of them, and the squares of their distances.
 #[multiversion(targets(
     "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
     "x86_64+avx+avx2",
     "aarch64+neon"
 ))]
-pub(super) fn distances(periods: &Periods, runs: [&mut [f64]; 3], squares: &mut [f64]) {
+pub(super) fn distances(
+    centre: [f64; 3],
+    periods: &Periods,
+    runs: [&mut [f64]; 3],
+    squares: &mut [f64],
+) {
     let (length, inverse) = (periods.lengths, periods.inverses);
     let [dx, dy, dz] = runs;
     for (((dx, dy), dz), square) in dx.iter_mut().zip(dy).zip(dz).zip(squares) {
-        *dx = nearest_image(*dx, length[0], inverse[0]);
-        *dy = nearest_image(*dy, length[1], inverse[1]);
-        *dz = nearest_image(*dz, length[2], inverse[2]);
+        *dx = nearest_image(*dx - centre[0], length[0], inverse[0]);
+        *dy = nearest_image(*dy - centre[1], length[1], inverse[1]);
+        *dz = nearest_image(*dz - centre[2], length[2], inverse[2]);
         *square = *dx * *dx + *dy * *dy + *dz * *dz;
     }
 }
@@ -296,9 +315,10 @@ mod tests {
             let runs: [[f64; BLOCK]; 3] = std::array::from_fn(|axis| std::array::from_fn(|index| place(index, axis)));
             let rough = runs.map(|run| run.map(|number| number as f32));
             let largest = rough.iter().flatten().fold(0f32, |most, number| most.max(number.abs()));
-            if let Some(geometry) = Rough::new(&periods, centre, (inner, outer), largest) {
+            let geometry = Rough::new(&periods, centre, (inner, outer));
+            if let Some(bounds) = geometry.bounds(largest) {
                 let mut marks = [0; BLOCK / MARKS];
-                geometry.mark([&rough[0], &rough[1], &rough[2]], &mut [0.0; BLOCK], &mut marks);
+                geometry.mark([&rough[0], &rough[1], &rough[2]], bounds, &mut [0.0; BLOCK], &mut marks);
                 let mut listed = [0; BLOCK];
                 let count = list(&marks, BLOCK, &mut listed);
                 let [x, y, z] = &runs;

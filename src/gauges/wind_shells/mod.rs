@@ -89,6 +89,7 @@ struct WindShells {
     /// Of the moment that was prepared last.
     shells: Shells,
     grid: Grid,
+    rough: flow::Rough,
     /// Room for the values of all stations in one shell.
     values: Vec<f64>,
 }
@@ -132,6 +133,7 @@ pub(super) fn build(section: &mut Section, config: &Config, plan: &mut Plan) -> 
         table,
         shells: Shells::default(),
         grid: Grid::default(),
+        rough: flow::Rough::default(),
         values: Vec::new(),
     })
 }
@@ -189,7 +191,6 @@ impl WindShells {
 
     /// Measures the elements of a block around the only station.
     fn measure_around_one(&self, block: &Block, work: &mut Work, sample: &mut Sample) {
-        let shells = &self.shells;
         let centre = self.stations[0].position;
         let Parts {
             runs: [dx, dy, dz, ..],
@@ -197,15 +198,12 @@ impl WindShells {
             rough_run,
             ahead,
         } = work.parts();
-        let ends = (shells.edges[0], shells.edges[shells.fitting()]);
-        let rough = block.roughly(Field::Position).and_then(|rough| {
-            let geometry = flow::Rough::new(&shells.periods, centre, ends, rough.largest)?;
-            Some((geometry, rough.runs))
-        });
+        let rough = block.roughly(Field::Position);
+        let rough = rough.and_then(|rough| Some((self.rough.bounds(rough.largest)?, rough.runs)));
         let count = match rough {
-            Some((geometry, runs)) => {
+            Some((bounds, runs)) => {
                 let mut marks = [0; BLOCK / flow::MARKS];
-                geometry.mark(runs, rough_run, &mut marks);
+                self.rough.mark(runs, bounds, rough_run, &mut marks);
                 ahead.some();
                 flow::list(&marks, block.len(), elements)
             }
@@ -219,16 +217,12 @@ impl WindShells {
         }
         owners[..count].fill(0);
         ahead.some();
-        let mut runs = [&mut dx[..count], &mut dy[..count], &mut dz[..count]];
         block.gather_vectors(
             Field::Position,
             &elements[..count],
-            runs.each_mut().map(|run| &mut **run),
+            [&mut dx[..count], &mut dy[..count], &mut dz[..count]],
         );
-        for (run, centre) in runs.into_iter().zip(centre) {
-            run.iter_mut().for_each(|to| *to -= centre);
-        }
-        self.measure_candidates(block, count, work, sample);
+        self.measure_candidates(block, centre, count, work, sample);
     }
 
     /// Measures the elements of a block around those stations that each of them is near.
@@ -256,15 +250,17 @@ impl WindShells {
                 dy[index] = y[element] - place[1];
                 dz[index] = z[element] - place[2];
             }
-            self.measure_candidates(block, pairs, work, sample);
+            self.measure_candidates(block, [0.0; 3], pairs, work, sample);
         }
     }
 
     /// Measures those pairs of an element and a station that are within reach of each other. They stand in the first
-    /// two runs of indices, the differences of their positions in the first three runs of numbers.
+    /// two runs of indices, the positions of the elements relative to the stations, but for `centre`, in the first three
+    /// runs of numbers.
     fn measure_candidates(
         &self,
         block: &Block,
+        centre: [f64; 3],
         pairs: usize,
         work: &mut Work,
         sample: &mut Sample,
@@ -277,7 +273,7 @@ impl WindShells {
         } = work.parts();
         ahead.some();
         let runs = [&mut dx[..pairs], &mut dy[..pairs], &mut dz[..pairs]];
-        flow::distances(&self.shells.periods, runs, &mut squares[..pairs]);
+        flow::distances(centre, &self.shells.periods, runs, &mut squares[..pairs]);
         let (low, high) = self.shells.squares;
         let mut count = 0;
         if flow::are_within(&squares[..pairs], low, high) {
@@ -463,6 +459,13 @@ impl WindShells {
 impl Gauge for WindShells {
     fn prepare(&mut self, moment: &Moment) {
         self.make_shells(moment);
+        if let (Some(&inner), Some(&outer), [station]) = (
+            self.shells.edges.first(),
+            self.shells.edges.last(),
+            &*self.stations,
+        ) {
+            self.rough = flow::Rough::new(&self.shells.periods, station.position, (inner, outer));
+        }
         if let Some(&reach) = self.shells.edges.last()
             && self.stations.len() > FEW
         {
