@@ -102,10 +102,10 @@ static void progress(struct history *history, const struct simulation *simulatio
     if (twentieth == history->last_twentieth)
         return;
     history->last_twentieth = twentieth;
-    printf("step %5llu  z %6.3f  %3.0f%%  sfrd %.2e Msun/yr/Mpc^3  stars %6.0f  holes %3.0f  %5.1f s\n",
+    printf("step %5llu  z %6.3f  %3.0f%%  sfrd %.2e Msun/yr/Mpc^3  stars %6.0f  %5.1f s\n",
            (unsigned long long)simulation->clock.step,
            fabs(redshift(simulation)), 100.0 * done, now->star_formation, now->counts[STARS],
-           now->counts[BLACK_HOLES], MPI_Wtime() - history->started);
+           MPI_Wtime() - history->started);
     fflush(stdout);
 }
 
