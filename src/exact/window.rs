@@ -30,6 +30,17 @@ pub(super) struct Fit {
     pub remainder: bool,
 }
 
+impl Fit {
+    /// From the bits in which the high constant was changed, and those of all remainders, joined.
+    fn of(changes: u64, remainders: u64) -> Fit {
+        Fit {
+            misfit: changes >> 52 != 0,
+            // A zero remainder may carry a sign.
+            remainder: remainders << 1 != 0,
+        }
+    }
+}
+
 /// The sums of both words.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub(super) struct Sums {
@@ -75,6 +86,26 @@ fn constant(place: i32) -> f64 {
     f64::from_bits((((place + 52 + 1023) as u64) << 52) | (1 << 51))
 }
 
+/// One value in the words of a window: what the constants become by adding it, and what stays below both.
+struct Parts {
+    coarse: u64,
+    fine: u64,
+    remainder: f64,
+}
+
+/// The operations on which everything here rests.
+#[inline(always)]
+fn part(value: f64, high: f64, low: f64) -> Parts {
+    let coarse = value + high;
+    let rest = value - (coarse - high);
+    let fine = rest + low;
+    Parts {
+        coarse: coarse.to_bits(),
+        fine: fine.to_bits(),
+        remainder: rest - (fine - low),
+    }
+}
+
 /// Bits of the largest magnitude.
 #[multiversion(targets(
     "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
@@ -97,24 +128,17 @@ pub(super) fn sum_in(values: &[f64], window: Window) -> Sums {
     let (high, low) = (constant(window.high), constant(window.low));
     let (mut high_bits, mut low_bits, mut remainders, mut changes) = (0u64, 0u64, 0u64, 0u64);
     for &value in values {
-        let coarse = value + high;
-        let rest = value - (coarse - high);
-        let fine = rest + low;
-        let remainder = rest - (fine - low);
-        high_bits = high_bits.wrapping_add(coarse.to_bits());
-        low_bits = low_bits.wrapping_add(fine.to_bits());
-        changes |= coarse.to_bits() ^ high.to_bits();
-        remainders |= remainder.to_bits();
+        let parts = part(value, high, low);
+        high_bits = high_bits.wrapping_add(parts.coarse);
+        low_bits = low_bits.wrapping_add(parts.fine);
+        changes |= parts.coarse ^ high.to_bits();
+        remainders |= parts.remainder.to_bits();
     }
     let count = values.len() as u64;
     Sums {
         high: high_bits.wrapping_sub(count.wrapping_mul(high.to_bits())) as i64,
         low: low_bits.wrapping_sub(count.wrapping_mul(low.to_bits())) as i64,
-        fit: Fit {
-            misfit: changes >> 52 != 0,
-            // A zero remainder may carry a sign.
-            remainder: remainders << 1 != 0,
-        },
+        fit: Fit::of(changes, remainders),
     }
 }
 
@@ -139,10 +163,7 @@ pub(super) fn sum_in_one(values: &[f64], window: Window) -> Sums {
     Sums {
         high: high_bits.wrapping_sub(count.wrapping_mul(high.to_bits())) as i64,
         low: 0,
-        fit: Fit {
-            misfit: changes >> 52 != 0,
-            remainder: remainders << 1 != 0,
-        },
+        fit: Fit::of(changes, remainders),
     }
 }
 
@@ -161,24 +182,16 @@ pub(super) fn split_in(
     let (high, low) = (constant(window.high), constant(window.low));
     let (mut remainders, mut changes) = (0u64, 0u64);
     for ((&value, high_word), low_word) in values.iter().zip(high_words).zip(low_words) {
-        let coarse = value + high;
-        let rest = value - (coarse - high);
-        let fine = rest + low;
-        let remainder = rest - (fine - low);
-        *high_word = coarse.to_bits().wrapping_sub(high.to_bits()) as i64;
-        *low_word = fine.to_bits().wrapping_sub(low.to_bits()) as i64;
-        changes |= coarse.to_bits() ^ high.to_bits();
-        remainders |= remainder.to_bits();
+        let parts = part(value, high, low);
+        *high_word = parts.coarse.wrapping_sub(high.to_bits()) as i64;
+        *low_word = parts.fine.wrapping_sub(low.to_bits()) as i64;
+        changes |= parts.coarse ^ high.to_bits();
+        remainders |= parts.remainder.to_bits();
     }
-    Fit {
-        misfit: changes >> 52 != 0,
-        remainder: remainders << 1 != 0,
-    }
+    Fit::of(changes, remainders)
 }
 
 /// What a value leaves below both words.
 pub(super) fn remainder(value: f64, window: Window) -> f64 {
-    let (high, low) = (constant(window.high), constant(window.low));
-    let rest = value - ((value + high) - high);
-    rest - ((rest + low) - low)
+    part(value, constant(window.high), constant(window.low)).remainder
 }

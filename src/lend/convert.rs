@@ -86,78 +86,49 @@ pub(super) fn some_single_triples(from: &[f32], elements: &[u32], [x, y, z]: [&m
     }
 }
 
-/// Rough vectors from three singles each, one after the other; the bits of the largest magnitude.
-#[multiversion(targets(
-    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
-    "x86_64+avx+avx2",
-    "aarch64+neon"
-))]
-pub(super) fn rough_single_triples(
-    from: &[f32],
-    x: &mut [f32],
-    y: &mut [f32],
-    z: &mut [f32],
-) -> u32 {
-    let mut largest = 0;
-    for (((from, x), y), z) in from.as_chunks::<3>().0.iter().zip(x).zip(y).zip(z) {
-        let bits = from.map(|number| number.to_bits() & !(1 << 31));
-        largest = largest.max(bits[0]).max(bits[1]).max(bits[2]);
-        [*x, *y, *z] = *from;
-    }
-    largest
+macro_rules! rough {
+    ($number:ty, $run:ident, $triples:ident) => {
+        /// Numbers in a row, rounded to singles; the bits of the largest magnitude.
+        #[multiversion(targets(
+            "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
+            "x86_64+avx+avx2",
+            "aarch64+neon"
+        ))]
+        pub(super) fn $run(from: &[$number], to: &mut [f32]) -> u32 {
+            let mut largest = 0;
+            for (from, to) in from.iter().zip(to) {
+                *to = *from as f32;
+                largest = largest.max(to.to_bits() & !(1 << 31));
+            }
+            largest
+        }
+
+        /// Vectors one after the other, rounded to singles; the bits of the largest magnitude.
+        #[multiversion(targets(
+            "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
+            "x86_64+avx+avx2",
+            "aarch64+neon"
+        ))]
+        pub(super) fn $triples(
+            from: &[$number],
+            x: &mut [f32],
+            y: &mut [f32],
+            z: &mut [f32],
+        ) -> u32 {
+            let mut largest = 0;
+            for (((from, x), y), z) in from.as_chunks::<3>().0.iter().zip(x).zip(y).zip(z) {
+                let rough = from.map(|number| number as f32);
+                let bits = rough.map(|number| number.to_bits() & !(1 << 31));
+                largest = largest.max(bits[0]).max(bits[1]).max(bits[2]);
+                [*x, *y, *z] = rough;
+            }
+            largest
+        }
+    };
 }
 
-/// As [`rough_single_triples`], from doubles.
-#[multiversion(targets(
-    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
-    "x86_64+avx+avx2",
-    "aarch64+neon"
-))]
-pub(super) fn rough_double_triples(
-    from: &[f64],
-    x: &mut [f32],
-    y: &mut [f32],
-    z: &mut [f32],
-) -> u32 {
-    let mut largest = 0;
-    for (((from, x), y), z) in from.as_chunks::<3>().0.iter().zip(x).zip(y).zip(z) {
-        let rough = from.map(|number| number as f32);
-        let bits = rough.map(|number| number.to_bits() & !(1 << 31));
-        largest = largest.max(bits[0]).max(bits[1]).max(bits[2]);
-        [*x, *y, *z] = rough;
-    }
-    largest
-}
-
-/// Rough numbers from singles in a row; the bits of the largest magnitude.
-#[multiversion(targets(
-    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
-    "x86_64+avx+avx2",
-    "aarch64+neon"
-))]
-pub(super) fn rough_singles(from: &[f32], to: &mut [f32]) -> u32 {
-    let mut largest = 0;
-    for (from, to) in from.iter().zip(to) {
-        largest = largest.max(from.to_bits() & !(1 << 31));
-        *to = *from;
-    }
-    largest
-}
-
-/// As [`rough_singles`], from doubles.
-#[multiversion(targets(
-    "x86_64+avx512f+avx512dq+avx512vl+avx512bw",
-    "x86_64+avx+avx2",
-    "aarch64+neon"
-))]
-pub(super) fn rough_doubles(from: &[f64], to: &mut [f32]) -> u32 {
-    let mut largest = 0;
-    for (from, to) in from.iter().zip(to) {
-        *to = *from as f32;
-        largest = largest.max(to.to_bits() & !(1 << 31));
-    }
-    largest
-}
+rough!(f32, rough_singles, rough_single_triples);
+rough!(f64, rough_doubles, rough_double_triples);
 
 vectorised! {
     /// Are all these singles finite?
@@ -203,6 +174,15 @@ mod tests {
             prop_assert_eq!(are_finite_singles(&singles_given), finite);
             prop_assert_eq!(finite, singles_given.iter().all(|value| value.is_finite()));
             prop_assert!(to.iter().zip(&singles_given).all(|(a, b)| a.to_bits() == f64::from(*b).to_bits() || b.is_nan()));
+
+            let mut rough = vec![0f32; doubles_given.len()];
+            let largest = f32::from_bits(rough_doubles(&doubles_given, &mut rough));
+            let expected = doubles_given.iter().map(|&value| value as f32);
+            prop_assert!(expected.clone().zip(&rough).all(|(a, &b)| a == b || a.is_nan()));
+            prop_assert_eq!(largest.is_finite(), expected.clone().all(f32::is_finite));
+            if largest.is_finite() {
+                prop_assert_eq!(largest, expected.fold(0f32, |most, value| most.max(value.abs())));
+            }
 
             let whole = doubles_given.len() / 3;
             let [mut x, mut y, mut z] = [const { Vec::new() }; 3].map(|_: Vec<f64>| vec![0.0; whole]);

@@ -8,6 +8,7 @@ mod ahead;
 mod convert;
 mod fields;
 mod lot;
+mod memory;
 mod view;
 
 pub use ahead::Ahead;
