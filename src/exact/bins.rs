@@ -207,16 +207,6 @@ impl Bins {
         self.counts[bin]
     }
 
-    /// How many bins there are.
-    pub fn len(&self) -> usize {
-        self.counts.len()
-    }
-
-    /// Are there no bins?
-    pub fn is_empty(&self) -> bool {
-        self.counts.is_empty()
-    }
-
     /// Has nothing been added since it was last cleared?
     pub fn is_untouched(&self) -> bool {
         !self.touched
@@ -334,16 +324,6 @@ impl Rounded {
     /// Contributions to a bin.
     pub fn number(&self, bin: usize) -> u64 {
         self.cells[bin * self.width + 2 * self.windows.len()]
-    }
-
-    /// How many bins there are.
-    pub fn len(&self) -> usize {
-        self.cells.len() / self.width
-    }
-
-    /// Are there no bins?
-    pub fn is_empty(&self) -> bool {
-        self.cells.is_empty()
     }
 
     /// Has nothing been added since it was last cleared?

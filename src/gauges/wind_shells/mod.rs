@@ -33,12 +33,10 @@ use crate::lend::{Field, Species};
 use crate::sweep::{BLOCK, Block, Parts, Work};
 use crate::units::constants::{KILOPARSEC, SOLAR_MASS, YEAR};
 use flow::Periods;
-use stations::{Grid, Station};
+use stations::{Grid, Stations};
 
 /// Up to so many stations have rows of their own.
 const EACH: usize = 64;
-/// Up to so many all are asked for each element.
-const FEW: usize = 1;
 /// The power of two to which the contributions of many stations are rounded, in solar masses and km/s.
 const QUANTUM: i32 = -40;
 
@@ -76,10 +74,7 @@ impl Shells {
 }
 
 struct WindShells {
-    stations: Vec<Station>,
-    /// Their positions and velocities, close together.
-    places: Vec<[f64; 3]>,
-    velocities: Vec<[f64; 3]>,
+    stations: Stations,
     volume: Volume,
     /// In cm, physical or comoving.
     edges: Vec<f64>,
@@ -104,7 +99,7 @@ pub(super) fn build(section: &mut Section, config: &Config, plan: &mut Plan) -> 
     let stations = settings::stations(section);
     settings::check_against_box(section, config, frame, &edges);
 
-    if stations.len() > FEW {
+    if stations.len() > 1 {
         plan.need(Species::Gas, Field::Position);
     } else {
         plan.need_roughly(Species::Gas, Field::Position);
@@ -123,8 +118,6 @@ pub(super) fn build(section: &mut Section, config: &Config, plan: &mut Plan) -> 
         (table, plan.rounded_bins(bins, quanta(config)))
     };
     Box::new(WindShells {
-        places: stations.iter().map(|station| station.position).collect(),
-        velocities: stations.iter().map(|station| station.velocity).collect(),
         stations,
         volume: config.volume,
         edges,
@@ -191,7 +184,7 @@ impl WindShells {
 
     /// Measures the elements of a block around the only station.
     fn measure_around_one(&self, block: &Block, work: &mut Work, sample: &mut Sample) {
-        let centre = self.stations[0].position;
+        let centre = self.stations.positions[0];
         let Parts {
             runs: [dx, dy, dz, ..],
             indices: [elements, owners, _],
@@ -244,7 +237,7 @@ impl WindShells {
                 .pairs(&cells[..block.len()], &mut next, elements, owners);
             for (index, (&element, &owner)) in elements.iter().zip(&*owners).enumerate().take(pairs)
             {
-                let place = &self.places[owner as usize];
+                let place = &self.stations.positions[owner as usize];
                 let element = element as usize % BLOCK;
                 dx[index] = x[element] - place[0];
                 dy[index] = y[element] - place[1];
@@ -310,12 +303,12 @@ impl WindShells {
         ahead.some();
         block.gather(Field::Mass, 0, &elements[..count], &mut masses[..count]);
         // One station's velocity is subtracted together with the rest; subtracting 0 afterwards changes nothing.
-        let mut drift = self.stations[0].velocity;
+        let mut drift = self.stations.velocities[0];
         if self.stations.len() > 1 {
             drift = [0.0; 3];
             let bins_of_each = (self.edges.len() as u32 - 1) * DIRECTIONS as u32;
             for (index, owner) in owners[..count].iter_mut().enumerate() {
-                let velocity = &self.velocities[*owner as usize];
+                let velocity = &self.stations.velocities[*owner as usize];
                 vx[index] -= velocity[0];
                 vy[index] -= velocity[1];
                 vz[index] -= velocity[2];
@@ -396,11 +389,11 @@ impl WindShells {
     }
 
     fn enter_each(&self, reading: &Reading, moment: &Moment, fitting: usize, entry: &mut Entry) {
-        for (station, named) in self.stations.iter().enumerate() {
+        for (station, name) in self.stations.names.iter().enumerate() {
             for (shell, (inner, outer)) in self.radii(moment).enumerate() {
                 entry.row(self.table);
                 entry.cell(moment.step);
-                entry.cell(&named.name);
+                entry.cell(name);
                 entry.cell(shell as u64);
                 entry.cell(inner / KILOPARSEC);
                 entry.cell(outer / KILOPARSEC);
@@ -462,14 +455,15 @@ impl Gauge for WindShells {
         if let (Some(&inner), Some(&outer), [station]) = (
             self.shells.edges.first(),
             self.shells.edges.last(),
-            &*self.stations,
+            &*self.stations.positions,
         ) {
-            self.rough = flow::Rough::new(&self.shells.periods, station.position, (inner, outer));
+            self.rough = flow::Rough::new(&self.shells.periods, *station, (inner, outer));
         }
         if let Some(&reach) = self.shells.edges.last()
-            && self.stations.len() > FEW
+            && self.stations.len() > 1
         {
-            self.grid.renew(&self.stations, self.shells.periods, reach);
+            self.grid
+                .renew(&self.stations.positions, self.shells.periods, reach);
         }
     }
 
@@ -484,7 +478,7 @@ impl Gauge for WindShells {
         if self.shells.fitting() == 0 {
             return;
         }
-        if self.stations.len() > FEW {
+        if self.stations.len() > 1 {
             self.measure_around_many(block, work, sample);
         } else {
             self.measure_around_one(block, work, sample);

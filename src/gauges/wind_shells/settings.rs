@@ -1,12 +1,12 @@
 //! What the config says of stations and shells.
 
 use super::Frame;
-use super::stations::Station;
+use super::stations::Stations;
 use crate::config::{Config, Quantity, Section};
 use crate::units::Dimension;
 
 /// The stations: one, or a list.
-pub(super) fn stations(section: &mut Section) -> Vec<Station> {
+pub(super) fn stations(section: &mut Section) -> Stations {
     let sections = match (section.has("station"), section.has("stations")) {
         (false, true) => section.sections("stations").or(Vec::new()),
         (true, true) => {
@@ -27,7 +27,7 @@ pub(super) fn stations(section: &mut Section) -> Vec<Station> {
     if is_list && sections.is_empty() && !section.has_problems() {
         section.refuse("stations", "expected at least one station");
     }
-    let mut stations: Vec<Station> = Vec::with_capacity(sections.len());
+    let mut stations = Stations::default();
     for mut given in sections {
         let number = stations.len() + 1;
         let name = given.text("name").or(if is_list {
@@ -40,13 +40,11 @@ pub(super) fn stations(section: &mut Section) -> Vec<Station> {
         let listed = given.numbers("velocity").optional();
         let velocity = listed.map_or([0.0; 3], |numbers| three(&mut given, "velocity", &numbers));
         section.adopt(given.finish().err().unwrap_or_default());
-        stations.push(Station {
-            name: name.into(),
-            position,
-            velocity,
-        });
+        stations.names.push(name.into());
+        stations.positions.push(position);
+        stations.velocities.push(velocity);
     }
-    let mut names: Vec<&str> = stations.iter().map(|station| &*station.name).collect();
+    let mut names: Vec<&str> = stations.names.iter().map(|name| &**name).collect();
     names.sort_unstable();
     if let Some(pair) = names.windows(2).find(|pair| pair[0] == pair[1]) {
         let text = format!(

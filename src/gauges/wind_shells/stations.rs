@@ -15,14 +15,20 @@ const USUAL: usize = 4;
 /// Distances are rounded: cells and shells reach farther by this part.
 const MARGIN: f64 = 1e-9;
 
-/// A place that is measured around.
-#[derive(Clone, Debug, PartialEq)]
-pub(super) struct Station {
-    pub name: std::sync::Arc<str>,
+/// The places that are measured around; what is asked for each element lies close together.
+#[derive(Default)]
+pub(super) struct Stations {
+    pub names: Vec<std::sync::Arc<str>>,
     /// In host position units.
-    pub position: [f64; 3],
+    pub positions: Vec<[f64; 3]>,
     /// In host velocity units.
-    pub velocity: [f64; 3],
+    pub velocities: Vec<[f64; 3]>,
+}
+
+impl Stations {
+    pub fn len(&self) -> usize {
+        self.names.len()
+    }
 }
 
 /// The cells of one moment.
@@ -61,7 +67,7 @@ struct Axis {
 
 impl Grid {
     /// Makes the grid for shells that reach as far as `reach`, unless that has been done.
-    pub fn renew(&mut self, stations: &[Station], periods: Periods, reach: f64) {
+    pub fn renew(&mut self, stations: &[[f64; 3]], periods: Periods, reach: f64) {
         if self.reach == reach && self.periods == periods && !self.starts.is_empty() {
             return;
         }
@@ -77,9 +83,9 @@ impl Grid {
     }
 
     /// Lays cells of about this side over the box, or over the stations where it is open.
-    fn divide(&mut self, stations: &[Station], side: f64) {
+    fn divide(&mut self, stations: &[[f64; 3]], side: f64) {
         for axis in 0..3 {
-            let places = || stations.iter().map(|station| station.position[axis]);
+            let places = || stations.iter().map(|station| station[axis]);
             let period = self.periods.lengths[axis];
             let (origin, extent) = if period > 0.0 {
                 (0.0, period)
@@ -101,15 +107,15 @@ impl Grid {
     }
 
     /// Fills the lists; `false` when they would become too long.
-    fn fill(&mut self, stations: &[Station]) -> bool {
+    fn fill(&mut self, stations: &[[f64; 3]]) -> bool {
         let cells = self.cells();
         let mut starts = std::mem::take(&mut self.starts);
         let mut lists = std::mem::take(&mut self.lists);
         starts.clear();
         starts.resize(cells + 2, 0);
         let mut places = 0;
-        for station in stations {
-            self.each_cell(station.position, |cell| {
+        for &station in stations {
+            self.each_cell(station, |cell| {
                 starts[cell + 1] += 1;
                 places += 1;
             });
@@ -125,8 +131,8 @@ impl Grid {
             // A few more than there are, so that as many as usual can be read at once.
             lists.resize(total as usize + USUAL, 0);
             // Each start is moved to the end of its list while it is filled, and back afterwards.
-            for (number, station) in stations.iter().enumerate() {
-                self.each_cell(station.position, |cell| {
+            for (number, &station) in stations.iter().enumerate() {
+                self.each_cell(station, |cell| {
                     lists[starts[cell] as usize] = number as u32;
                     starts[cell] += 1;
                 });
@@ -321,14 +327,6 @@ mod tests {
     use super::*;
     use proptest::prelude::*;
 
-    fn station(position: [f64; 3]) -> Station {
-        Station {
-            name: "one".into(),
-            position,
-            velocity: [0.0; 3],
-        }
-    }
-
     proptest! {
         /// Whoever is within reach of a station finds it in the list of its cell, once.
         #[test]
@@ -338,20 +336,19 @@ mod tests {
             reach in 0.01f64..2.9,
             periodic in proptest::array::uniform3(proptest::bool::ANY),
         ) {
-            let stations: Vec<Station> = places.iter().map(|&place| station(place)).collect();
             let lengths = [6.0, 7.0, 6.5];
             let periods = Periods::new(std::array::from_fn(|axis| periodic[axis].then_some(lengths[axis])));
             let mut grid = Grid::default();
-            grid.renew(&stations, periods, reach);
+            grid.renew(&places, periods, reach);
             let runs: [Vec<f64>; 3] =
                 std::array::from_fn(|axis| elements.iter().map(|element| element[axis]).collect());
             let mut cells = vec![0; elements.len()];
             grid.cells_of([&runs[0], &runs[1], &runs[2]], &mut cells);
             for (element, &cell) in elements.iter().zip(&cells) {
                 let near = grid.near(cell);
-                for (number, station) in stations.iter().enumerate() {
+                for (number, station) in places.iter().enumerate() {
                     let square: f64 = (0..3).map(|axis| {
-                        let distance = element[axis] - station.position[axis];
+                        let distance = element[axis] - station[axis];
                         let period = lengths[axis];
                         let nearest = if periodic[axis] { distance - period * (distance / period).round() } else { distance };
                         nearest * nearest
